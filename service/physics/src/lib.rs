@@ -4,9 +4,15 @@
 //! crate knows none.
 
 pub mod crystal;
+pub mod dynamics;
 pub mod elements;
 pub mod force_constants;
+pub mod images;
+pub mod long_wave;
+pub mod projection;
+pub mod qmesh;
 pub mod supercell;
+pub mod symmetry;
 pub mod units;
 
 pub use crystal::Crystal;
