@@ -41,10 +41,98 @@ pub struct Modes {
 }
 
 impl Modes {
-    /// The eigenvector of a branch.
+    /// The eigenvector of a branch. At Γ without the acoustic branches there are fewer branches than components.
+    ///
+    /// # Panics
+    /// If there is no such branch.
     pub fn vector(&self, branch: usize) -> &[c64] {
-        let order = self.eigenvalues.len();
-        &self.vectors[branch * order..(branch + 1) * order]
+        let components = self.vectors.len() / self.eigenvalues.len().max(1);
+        &self.vectors[branch * components..(branch + 1) * components]
+    }
+}
+
+/// A dynamical matrix, row-major, real where the crystal allows it.
+#[derive(Debug, Clone, PartialEq)]
+pub enum MatrixForm {
+    /// Real symmetric, in the basis of an inversion.
+    Real(Vec<f64>),
+    /// Hermitian.
+    Complex(Vec<c64>),
+}
+
+impl MatrixForm {
+    /// Eigenvalues, ascending.
+    ///
+    /// # Errors
+    /// Those of the eigensolver.
+    pub fn eigenvalues(&self, order: usize) -> Result<Vec<f64>, EigenError> {
+        match self {
+            Self::Real(matrix) => symmetric_eigenvalues(order, matrix),
+            Self::Complex(matrix) => hermitian_eigenvalues(order, matrix),
+        }
+    }
+
+    /// `factor` times another matrix of the same form, added.
+    #[must_use]
+    pub fn plus(mut self, other: &Self, factor: f64) -> Self {
+        match (&mut self, other) {
+            (Self::Real(sum), Self::Real(term)) => {
+                sum.iter_mut().zip(term).for_each(|(s, t)| *s += factor * t);
+            }
+            (Self::Complex(sum), Self::Complex(term)) => {
+                sum.iter_mut().zip(term).for_each(|(s, t)| *s += t * factor);
+            }
+            (Self::Real(_), Self::Complex(_)) | (Self::Complex(_), Self::Real(_)) => {
+                debug_assert!(false, "two forms of one crystal are of one kind");
+            }
+        }
+        self
+    }
+
+    /// `factor`·v v† added, v in the basis of this form.
+    #[must_use]
+    pub fn plus_outer(mut self, vector: &[c64], factor: f64) -> Self {
+        let order = vector.len();
+        match &mut self {
+            Self::Real(matrix) => {
+                for (row, left) in vector.iter().enumerate() {
+                    for (column, right) in vector.iter().enumerate() {
+                        matrix[row * order + column] += factor * (left * right.conj()).re;
+                    }
+                }
+            }
+            Self::Complex(matrix) => {
+                for (row, left) in vector.iter().enumerate() {
+                    for (column, right) in vector.iter().enumerate() {
+                        matrix[row * order + column] += left * right.conj() * factor;
+                    }
+                }
+            }
+        }
+        self
+    }
+
+    /// v† M v, v in the basis of this form.
+    pub fn expectation(&self, vector: &[c64]) -> f64 {
+        let order = vector.len();
+        let row_product = |row: usize| -> c64 {
+            let columns = row * order..(row + 1) * order;
+            match self {
+                Self::Real(matrix) => matrix[columns]
+                    .iter()
+                    .zip(vector)
+                    .map(|(m, v)| v * *m)
+                    .sum(),
+                Self::Complex(matrix) => {
+                    matrix[columns].iter().zip(vector).map(|(m, v)| m * v).sum()
+                }
+            }
+        };
+        vector
+            .iter()
+            .enumerate()
+            .map(|(row, v)| (v.conj() * row_product(row)).re)
+            .sum()
     }
 }
 
@@ -113,11 +201,8 @@ impl Dynamics {
     /// # Errors
     /// Those of the eigensolver.
     pub fn eigenvalues(&self, q: &Vector3<f64>) -> Result<Vec<f64>, EigenError> {
-        let order = self.branch_count();
-        match &self.inversion {
-            Some(basis) => symmetric_eigenvalues(order, &self.real_matrix(q, basis)),
-            None => hermitian_eigenvalues(order, &self.matrix(q)),
-        }
+        self.form(q, Sharing::Nearest)
+            .eigenvalues(self.branch_count())
     }
 
     /// Eigenvalues and eigenvectors at q.
@@ -125,22 +210,56 @@ impl Dynamics {
     /// # Errors
     /// Those of the eigensolver.
     pub fn modes(&self, q: &Vector3<f64>) -> Result<Modes, EigenError> {
-        let order = self.branch_count();
+        self.modes_of(&self.form(q, Sharing::Nearest))
+    }
+
+    /// D(q), row-major, 3n × 3n, Hermitian; eV/Å²/u. Cost O(L n²).
+    pub fn matrix(&self, q: &Vector3<f64>) -> Vec<c64> {
+        self.matrix_with(q, Sharing::Nearest)
+    }
+
+    /// D(q) with a sharing of the images. [`Sharing::InversePower`] is slower: its shares are not stored.
+    pub fn matrix_with(&self, q: &Vector3<f64>, sharing: Sharing) -> Vec<c64> {
+        let rows: Vec<usize> = (0..self.crystal.atom_count()).collect();
+        let mut matrix = self.rows(q, &rows, sharing);
+        hermitise(self.branch_count(), &mut matrix);
+        matrix
+    }
+
+    /// D(q) in the form that is cheapest to diagonalise: real where an inversion is known.
+    pub fn form(&self, q: &Vector3<f64>, sharing: Sharing) -> MatrixForm {
         match &self.inversion {
             Some(basis) => {
-                let Eigen { values, vectors } =
-                    symmetric_eigen(order, &self.real_matrix(q, basis))?;
-                let vectors = vectors
-                    .chunks(order)
-                    .flat_map(|v| basis.to_atoms(v))
-                    .collect();
+                let rows = self.rows(q, &basis.representatives(), sharing);
+                MatrixForm::Real(basis.real_form(self.crystal.atom_count(), &rows))
+            }
+            None => MatrixForm::Complex(self.matrix_with(q, sharing)),
+        }
+    }
+
+    /// Modes of a matrix that [`Dynamics::form`] made, or of a sum of such matrices.
+    ///
+    /// # Errors
+    /// Those of the eigensolver.
+    pub fn modes_of(&self, form: &MatrixForm) -> Result<Modes, EigenError> {
+        let order = self.branch_count();
+        match form {
+            MatrixForm::Real(matrix) => {
+                let Eigen { values, vectors } = symmetric_eigen(order, matrix)?;
+                let vectors = match &self.inversion {
+                    Some(basis) => vectors
+                        .chunks(order)
+                        .flat_map(|v| basis.to_atoms(v))
+                        .collect(),
+                    None => vectors.into_iter().map(|x| c64::new(x, 0.0)).collect(),
+                };
                 Ok(Modes {
                     eigenvalues: values,
                     vectors,
                 })
             }
-            None => {
-                let Eigen { values, vectors } = hermitian_eigen(order, &self.matrix(q))?;
+            MatrixForm::Complex(matrix) => {
+                let Eigen { values, vectors } = hermitian_eigen(order, matrix)?;
                 Ok(Modes {
                     eigenvalues: values,
                     vectors,
@@ -149,27 +268,12 @@ impl Dynamics {
         }
     }
 
-    /// D(q), row-major, 3n × 3n, Hermitian; eV/Å²/u. Cost O(L n²).
-    pub fn matrix(&self, q: &Vector3<f64>) -> Vec<c64> {
-        let rows: Vec<usize> = (0..self.crystal.atom_count()).collect();
-        let mut matrix = self.rows(q, &rows, Sharing::Nearest);
-        hermitise(self.branch_count(), &mut matrix);
-        matrix
-    }
-
-    /// D(q) with another sharing of the images, Hermitian. Slower than [`Dynamics::matrix`]: shares are not stored.
-    pub fn matrix_with(&self, q: &Vector3<f64>, sharing: Sharing) -> Vec<c64> {
-        let rows: Vec<usize> = (0..self.crystal.atom_count()).collect();
-        let mut matrix = self.rows(q, &rows, sharing);
-        hermitise(self.branch_count(), &mut matrix);
-        matrix
-    }
-
-    /// The real symmetric form of D(q) in the basis of the module documentation; `None` without an inversion.
-    pub fn real_form(&self, q: &Vector3<f64>) -> Option<Vec<f64>> {
-        self.inversion
-            .as_ref()
-            .map(|basis| self.real_matrix(q, basis))
+    /// A vector of atomic amplitudes in the basis of [`Dynamics::form`].
+    pub fn to_form_basis(&self, vector: &[c64]) -> Vec<c64> {
+        match &self.inversion {
+            Some(basis) => basis.to_real(vector),
+            None => vector.to_vec(),
+        }
     }
 
     fn rows(&self, q: &Vector3<f64>, rows: &[usize], sharing: Sharing) -> Vec<c64> {
@@ -200,11 +304,6 @@ impl Dynamics {
             }
         }
         matrix
-    }
-
-    fn real_matrix(&self, q: &Vector3<f64>, basis: &InversionBasis) -> Vec<f64> {
-        let rows = self.rows(q, &basis.representatives(), Sharing::Nearest);
-        basis.real_form(self.crystal.atom_count(), &rows)
     }
 }
 
@@ -351,6 +450,26 @@ impl InversionBasis {
         }
         mirror_upper(order, 3 * fixed, &mut real);
         real
+    }
+
+    /// Atomic amplitudes in the basis of the real form; complex unless their phase was chosen by it.
+    fn to_real(&self, atoms: &[c64]) -> Vec<c64> {
+        let mut vector = vec![c64::new(0.0, 0.0); atoms.len()];
+        let (fixed, pairs) = (self.fixed.len(), self.pairs.len());
+        for (s, &atom) in self.fixed.iter().enumerate() {
+            for a in 0..3 {
+                vector[3 * s + a] = atoms[3 * atom + a];
+            }
+        }
+        for (p, &(i, image)) in self.pairs.iter().enumerate() {
+            for a in 0..3 {
+                let (first, second) = (atoms[3 * i + a], atoms[3 * image + a]);
+                vector[3 * (fixed + p) + a] = (first + second) * FRAC_1_SQRT_2;
+                let minus = (first - second) * FRAC_1_SQRT_2;
+                vector[3 * (fixed + pairs + p) + a] = minus * c64::new(0.0, -1.0);
+            }
+        }
+        vector
     }
 
     /// An eigenvector of the real form as mass-weighted atomic amplitudes.

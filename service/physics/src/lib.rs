@@ -4,16 +4,20 @@
 //! crate knows none.
 
 pub mod crystal;
+pub mod density_of_states;
 pub mod dynamics;
 pub mod elements;
 pub mod force_constants;
+pub mod gamma_point;
 pub mod images;
 pub mod long_wave;
 pub mod projection;
 pub mod qmesh;
 pub mod supercell;
 pub mod symmetry;
+pub mod thermodynamics;
 pub mod units;
+pub mod vibrations;
 
 pub use crystal::Crystal;
 pub use elements::Element;

@@ -8,9 +8,9 @@
 //! rotation sum, ensure; otherwise λ has a term linear in q, whose size is reported.
 
 use nalgebra::{DMatrix, Matrix3, SymmetricEigen, Vector3};
-use tarehouse_eigensolver::{EigenError, symmetric_eigen};
+use tarehouse_eigensolver::{EigenError, c64, symmetric_eigen};
 
-use crate::dynamics::Dynamics;
+use crate::dynamics::{Dynamics, Modes};
 
 /// The acoustic matrix as a quadratic form in q.
 #[derive(Debug, Clone, PartialEq)]
@@ -19,8 +19,7 @@ pub struct AcousticMatrix {
     stiffness: [[Matrix3<f64>; 3]; 3],
     /// Largest |Uᵀ D1_c U|, eV/Å/u: zero where K is complete.
     pub linear_term: f64,
-    /// Eigenvalues of the optical block of D(Γ), ascending, eV/Å²/u.
-    pub optical_eigenvalues: Vec<f64>,
+    optical: OpticalSpace,
 }
 
 /// Optical eigenvalues below this share of the largest are left out of the pseudo-inverse, eV/Å²/u relative: a free
@@ -33,7 +32,6 @@ impl AcousticMatrix {
     /// # Errors
     /// Those of the eigensolver.
     pub fn new(dynamics: &Dynamics) -> Result<Self, EigenError> {
-        let order = dynamics.branch_count();
         let rigid = rigid_translations(dynamics.crystal().masses_u());
         let moments = Moments::new(dynamics, &rigid);
         let optical = OpticalSpace::new(dynamics, &rigid)?;
@@ -57,11 +55,10 @@ impl AcousticMatrix {
                 (k + k.transpose()) * 0.5
             })
         });
-        debug_assert_eq!(optical.values.len() + 3, order);
         Ok(Self {
             stiffness,
             linear_term,
-            optical_eigenvalues: optical.values,
+            optical,
         })
     }
 
@@ -99,6 +96,20 @@ impl AcousticMatrix {
             values.map(|x| x.max(least)),
             values.iter().any(|x| *x < 0.0),
         )
+    }
+
+    /// The 3n − 3 optical modes at Γ: those orthogonal to the rigid translations.
+    pub fn optical_modes(&self) -> Modes {
+        let vectors = self
+            .optical
+            .vectors
+            .iter()
+            .map(|x| c64::new(*x, 0.0))
+            .collect();
+        Modes {
+            eigenvalues: self.optical.values.clone(),
+            vectors,
+        }
     }
 
     /// K_cd,ab for elastic constants: mass density times K is the stiffness of long waves; eV/u.
@@ -156,6 +167,7 @@ impl Moments {
 }
 
 /// Eigenvectors of D(Γ) orthogonal to the rigid translations.
+#[derive(Debug, Clone, PartialEq)]
 struct OpticalSpace {
     values: Vec<f64>,
     vectors: DMatrix<f64>,
