@@ -86,6 +86,8 @@ limits! {
     BlunderLimits {
         /// eV/Å², least and largest.
         bond_constant_ev_per_ang2: [f64; 2],
+        /// eV/Å², least and largest.
+        bond_to_hydrogen_ev_per_ang2: [f64; 2],
         /// Cosine.
         bond_direction_cosine: f64,
         /// Share of bonds.
@@ -96,6 +98,8 @@ limits! {
         strong_share_min: f64,
         /// Share.
         alternative_gain: f64,
+        /// Share.
+        locality_gain: f64,
     }
 }
 
@@ -282,9 +286,10 @@ impl Policy {
     /// # Errors
     /// [`PolicyError`] with the place.
     pub fn parse(text: &str) -> Result<Self, PolicyError> {
-        let limits = toml::from_str(text).map_err(|error| PolicyError {
+        let limits: Limits = toml::from_str(text).map_err(|error| PolicyError {
             detail: error.to_string(),
         })?;
+        limits.check()?;
         Ok(Self {
             digest: *blake3::hash(text.as_bytes()).as_bytes(),
             text: text.to_owned(),

@@ -106,6 +106,12 @@ pub fn image_vector(image: &ImageTranslation) -> Vector3<f64> {
     Vector3::from(image.map(f64::from))
 }
 
+/// Length of the shortest vector of the supercell lattice, Å: the first of a Minkowski-reduced basis.
+pub fn shortest_supercell_vector_ang(crystal: &Crystal, supercell: &Supercell) -> f64 {
+    let vectors = ImageSearch::new(crystal, supercell).reduced * crystal.cell();
+    vectors.row_iter().map(|row| row.norm()).fold(f64::INFINITY, f64::min)
+}
+
 /// The search for images of a pair, also used with other ways of sharing.
 #[derive(Debug, Clone)]
 pub struct ImageSearch<'a> {

@@ -18,8 +18,10 @@ pub mod symmetry;
 pub mod thermodynamics;
 pub mod units;
 pub mod vibrations;
+pub mod molecules;
 
 pub use crystal::Crystal;
 pub use elements::Element;
 pub use force_constants::ForceConstants;
 pub use supercell::Supercell;
+pub use tarehouse_eigensolver::{EigenError, c64};

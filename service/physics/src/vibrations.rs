@@ -6,14 +6,14 @@ use crate::thermodynamics::Harmonic;
 use crate::units::phonon_energy_unit_ev;
 
 /// Thermodynamic functions of one primitive cell: the mesh sum over positive eigenvalues λ (eV/Å²/u) plus the Γ
-/// correction with the weight of one mesh point.
+/// correction of [`gamma_term`] at the same temperature, with the weight of one mesh point.
 ///
 /// `eigenvalues` by point of the mesh; at Γ the 3n − 3 optical ones. Points of weight zero are skipped. Summed in the
 /// order of the points, so that the result does not depend on the number of threads.
 pub fn of_mesh(
     mesh: &QMesh,
     eigenvalues: &[Vec<f64>],
-    gamma: &GammaCorrection,
+    gamma_term: Harmonic,
     temperature_k: f64,
 ) -> Harmonic {
     let unit = phonon_energy_unit_ev();
@@ -27,7 +27,7 @@ pub fn of_mesh(
             total += modes.sum::<Harmonic>() * weight;
         }
     }
-    total + gamma_term(gamma, temperature_k) * (mesh.point_count() as f64).recip()
+    total + gamma_term * (mesh.point_count() as f64).recip()
 }
 
 /// c(T) for F, U, S and C_V at once, eV and eV/K.
