@@ -316,19 +316,18 @@ impl FreeEnergyCurve {
             first_k,
             last_k,
         };
-        let (first_k, last_k) = match (self.temperatures_k.first(), self.temperatures_k.last()) {
-            (Some(&first), Some(&last)) => (first, last),
-            _ => return Err(outside(f64::NAN, f64::NAN)),
+        let grid = &self.temperatures_k;
+        let (Some(&first_k), Some(&last_k)) = (grid.first(), grid.last()) else {
+            return Err(outside(f64::NAN, f64::NAN));
         };
         if !(first_k..=last_k).contains(&temperature_k) {
             return Err(outside(first_k, last_k));
         }
-        let above = self
-            .temperatures_k
+        let above = grid
             .partition_point(|&node| node <= temperature_k)
-            .clamp(1, self.temperatures_k.len() - 1);
+            .clamp(1, grid.len() - 1);
         let ends = [above - 1, above];
-        let [low_k, high_k] = ends.map(|end| self.temperatures_k[end]);
+        let [low_k, high_k] = ends.map(|end| grid[end]);
         Ok(Interval {
             fraction: (temperature_k - low_k) / (high_k - low_k),
             width_k: high_k - low_k,
