@@ -1,4 +1,5 @@
-//! Between the messages of the wire and the words of the domain. Nothing is lost either way.
+//! Between the messages of the wire and the words of the domain. Nothing is lost either way, but the sign of a
+//! zero, which the wire format does not keep.
 
 mod names;
 mod report;
