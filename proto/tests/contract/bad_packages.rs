@@ -1,5 +1,6 @@
 //! Bad packages: each fault is named with its place, and all are named at once.
 
+use tarehouse_assay::submission::{CellProtocol, LongRange, Settings};
 use tarehouse_physics::units::{BOHR_ANGSTROM, EV_TO_KJ_PER_MOL, HARTREE_EV};
 use tarehouse_proto::package::{Violations, check_manifest, decode, npy};
 
@@ -35,6 +36,23 @@ fn the_good_package_is_taken() {
     assert!(!summary.arrays[0].accepts_size(288 * 8));
     assert!(!summary.arrays[0].accepts_size(288 * 8 + npy::PREAMBLE_BYTES_MAX + 1));
     assert!(!summary.arrays[0].accepts_size(0));
+}
+
+#[test]
+fn what_is_left_out_has_its_default() {
+    let manifest = check_manifest(MANIFEST.as_bytes()).unwrap().manifest;
+    assert_eq!(manifest.cell_protocol, CellProtocol::Relaxed);
+    assert_eq!(manifest.cell_temperature_k, None);
+    assert_eq!(manifest.declaration.long_range, LongRange::Included);
+    assert_eq!(manifest.declaration.enforced, []);
+    assert!(!manifest.masses_declared);
+    assert_eq!(manifest.identity.contributor_key, None);
+    assert_eq!(manifest.energy.level, None);
+    assert_eq!(manifest.settings, Settings::default());
+    // An empty text counts as none.
+    let empty = with("form = \"II\"", "form = \"II\"\ncontributor_key = \"\"");
+    let manifest = check_manifest(empty.as_bytes()).unwrap().manifest;
+    assert_eq!(manifest.identity.contributor_key, None);
 }
 
 #[test]
