@@ -138,14 +138,14 @@ fn chain_thermodynamics_agrees_with_high_precision_numbers() {
             "F",
             energies(mean(|m| m.free_energy)),
             value("F"),
-            2e-12,
+            2e-11,
             0.0,
         );
         assert_near(
             "U",
             energies(mean(|m| m.internal_energy)),
             value("U"),
-            2e-12,
+            2e-11,
             0.0,
         );
         let entropy = mean(|m| m.entropy) / BOLTZMANN_EV_PER_K;
