@@ -1,4 +1,5 @@
-//! Molecules cut by cell faces, interleaved, linear, endless; and the rigid share of modes built to be rigid or not.
+//! Molecules cut by cell faces, interleaved, linear, endless; and the rigid share of modes built to
+//! be rigid or not.
 
 use std::f64::consts::PI;
 
@@ -120,7 +121,8 @@ fn bonds_end_at_the_sum_of_radii_and_tolerance() {
 
 #[test]
 fn interleaved_molecules_stay_apart() {
-    // Two carbon rods side by side, each across the face of a cell shorter than either is wide when wrapped.
+    // Two carbon rods side by side, each across the face of a cell shorter than either is wide when
+    // wrapped.
     let rod = |x: f64, y: f64| (0..4).map(move |k| ("C", [x, y, 1.4 * f64::from(k)]));
     let cell = Matrix3::from_diagonal(&Vector3::new(7.0, 7.0, 8.0));
     let mut atoms: Vec<(&str, [f64; 3])> = Vec::new();
@@ -137,7 +139,8 @@ fn interleaved_molecules_stay_apart() {
         .map(|molecule| molecule.members()[3].shift[2])
         .collect();
     assert_eq!(ends, [0, 1]);
-    // The rods stand 2.5 Å apart across a face, their centres shifted by 5 − 8 = −3 Å along themselves.
+    // The rods stand 2.5 Å apart across a face, their centres shifted by 5 − 8 = −3 Å along
+    // themselves.
     let expected = (2.5_f64.powi(2) + 0.3_f64.powi(2) + 3.0_f64.powi(2)).sqrt();
     assert!((molecules.nearest_centre_distance_ang() - expected).abs() < 1e-12);
 }
@@ -173,7 +176,8 @@ fn networks_know_their_dimension() {
     assert_eq!(extent(diagonal, &[("C", [0.0; 3])]), Extent::Periodic(1));
 }
 
-/// The mode e_i = √m_i (push + turn × arm_i) exp(−2πi q·(x_i + R_i)) of one molecule, zero on the others.
+/// The mode e_i = √m_i (push + turn × arm_i) exp(−2πi q·(x_i + R_i)) of one molecule, zero on the
+/// others.
 fn rigid_mode(
     crystal: &Crystal,
     molecule: &Molecule,
