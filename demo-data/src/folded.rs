@@ -57,6 +57,16 @@ impl<'a> Interpolation<'a> {
         }
     }
 
+    /// Distance of the nearest images of each block [l][i][j], Å.
+    pub fn distances_ang(&self) -> Vec<f64> {
+        let length = |images: &Vec<Vector3<f64>>| {
+            images
+                .first()
+                .map_or(0.0, |separation| self.crystal.cartesian(separation).norm())
+        };
+        self.images.iter().map(length).collect()
+    }
+
     /// The interpolated dynamical matrix at q, row-major, eV/Å²/u.
     pub fn dynamical_matrix(&self, q: &Vector3<f64>) -> Vec<c64> {
         let n = self.crystal.atom_count();

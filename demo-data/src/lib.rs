@@ -27,11 +27,22 @@ pub mod folded;
 
 pub mod harmonic;
 
+pub mod noise;
+
+pub mod package;
+
+mod manifest;
+
+mod npy;
+
 pub mod forms;
+
+pub mod scenario;
 
 pub use compound::Compound;
 pub use constants::RealSpaceConstants;
 pub use molecular_crystal::MolecularCrystal;
+pub use package::Package;
 pub use relax::relax;
 pub use symmetry::SpaceGroup;
 

@@ -63,6 +63,8 @@ pub enum SpaceGroup {
     Pc,
     /// P2₁/c, no. 14.
     P21c,
+    /// P2₁/n, no. 14 with another choice of a and c.
+    P21n,
     /// P2₁2₁2₁, no. 19.
     P212121,
     /// Pca2₁, no. 29.
@@ -76,12 +78,13 @@ const I: ([i64; 3], [f64; 3]) = ([-1, -1, -1], [0.0, 0.0, 0.0]);
 
 impl SpaceGroup {
     /// All groups of this module.
-    pub const ALL: [Self; 8] = [
+    pub const ALL: [Self; 9] = [
         Self::P1,
         Self::PBar1,
         Self::P21,
         Self::Pc,
         Self::P21c,
+        Self::P21n,
         Self::P212121,
         Self::Pca21,
         Self::Pna21,
@@ -95,6 +98,7 @@ impl SpaceGroup {
             Self::P21 => "P2_1",
             Self::Pc => "Pc",
             Self::P21c => "P2_1/c",
+            Self::P21n => "P2_1/n",
             Self::P212121 => "P2_12_12_1",
             Self::Pca21 => "Pca2_1",
             Self::Pna21 => "Pna2_1",
@@ -105,7 +109,7 @@ impl SpaceGroup {
     pub fn system(self) -> CrystalSystem {
         match self {
             Self::P1 | Self::PBar1 => CrystalSystem::Triclinic,
-            Self::P21 | Self::Pc | Self::P21c => CrystalSystem::Monoclinic,
+            Self::P21 | Self::Pc | Self::P21c | Self::P21n => CrystalSystem::Monoclinic,
             Self::P212121 | Self::Pca21 | Self::Pna21 => CrystalSystem::Orthorhombic,
         }
     }
@@ -122,6 +126,12 @@ impl SpaceGroup {
                 ([-1, 1, -1], [0.0, 0.5, 0.5]),
                 I,
                 ([1, -1, 1], [0.0, 0.5, 0.5]),
+            ],
+            Self::P21n => &[
+                E,
+                ([-1, 1, -1], [0.5, 0.5, 0.5]),
+                I,
+                ([1, -1, 1], [0.5, 0.5, 0.5]),
             ],
             Self::P212121 => &[
                 E,

@@ -43,15 +43,19 @@ fn main() -> Result<(), Box<dyn std::error::Error>> {
     let (starts, seed, keep): (u64, u64, usize) = (starts.parse()?, seed.parse()?, keep.parse()?);
     let mut found: Vec<Minimum> = Vec::new();
     for group in SpaceGroup::ALL {
-        if groups.is_empty() && group == SpaceGroup::P1 {
-            continue;
-        }
         if groups.is_empty() || groups.iter().any(|g| g == group.symbol()) {
             found.extend(search(&compound, group, starts, seed));
         }
     }
     found.sort_by(|a, b| a.energy_kj.total_cmp(&b.energy_kj));
-    found.dedup_by(|a, b| (a.energy_kj - b.energy_kj).abs() < 2e-3);
+    // `dedup_by` removes its first argument; of equal minima the one with the least oblique cell stays.
+    found.dedup_by(|a, b| {
+        let same = (a.energy_kj - b.energy_kj).abs() < 2e-3;
+        if same && a.crystal.cell_heights().norm() > b.crystal.cell_heights().norm() {
+            std::mem::swap(a, b);
+        }
+        same
+    });
     for (rank, minimum) in found.into_iter().take(keep).enumerate() {
         describe(&mut out, rank, &minimum)?;
     }
