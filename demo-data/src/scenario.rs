@@ -17,7 +17,6 @@ use crate::harmonic::{Mesh, Spectrum};
 use crate::molecular_crystal::MolecularCrystal;
 use crate::noise::Disturbance;
 use crate::package::Package;
-use crate::relax::largest_force;
 
 /// Standard deviation of the errors of a careful contributor, eV/Å².
 pub const CAREFUL_SIGMA: f64 = 2e-5;
@@ -152,7 +151,6 @@ impl Entry {
         let forces = model.forces();
         let square: f64 = forces.iter().map(Vector3::norm_squared).sum();
         let largest = forces.iter().map(Vector3::norm).fold(0.0, f64::max);
-        debug_assert!(largest_force(model) <= largest);
         let part = |text: &str| Some(text.to_owned());
         Settings {
             kind: Some(MethodKind::ForceField),
