@@ -6,7 +6,9 @@ use tarehouse_demo_data::folded::Interpolation;
 use tarehouse_demo_data::forms::{self, Form};
 use tarehouse_demo_data::harmonic::{Mesh, Spectrum};
 use tarehouse_demo_data::scenario;
-use tarehouse_physics::units::{EV_TO_KJ_PER_MOL, wavenumber_per_cm};
+use tarehouse_physics::units::{
+    BOLTZMANN_EV_PER_K, EV_TO_KJ_PER_MOL, eigenvalue_of_wavenumber, wavenumber_per_cm,
+};
 
 use crate::packages::entry;
 
@@ -192,5 +194,44 @@ fn interpolation_of_the_good_packages_keeps_the_free_energy() {
         let gap = (seen - truth) / model.molecule_count() as f64 * EV_TO_KJ_PER_MOL;
         println!("{name}: {gap:.4} kJ/mol");
         assert!(gap.abs() < 0.05, "{name}: {gap}");
+    }
+}
+
+#[test]
+fn one_oscillator_has_the_free_energy_of_its_ladder() {
+    // 1000 cm⁻¹ is 0.123 984 198 eV: 1 eV = 8065.543 937 cm⁻¹ (CODATA 2022, from memory).
+    let quantum = 1000.0 / 8_065.543_937;
+    let spectrum = Spectrum {
+        points: vec![(vec![eigenvalue_of_wavenumber(1000.0)], 2.0)],
+    };
+    assert!((spectrum.free_energy_ev(0.0) - 0.5 * quantum).abs() < 1e-9);
+    for temperature in [100.0, 300.0, 3000.0] {
+        let thermal = BOLTZMANN_EV_PER_K * temperature;
+        let ladder: f64 = (0..400)
+            .map(|level| (-(f64::from(level) + 0.5) * quantum / thermal).exp())
+            .sum();
+        assert!((spectrum.free_energy_ev(temperature) + thermal * ladder.ln()).abs() < 1e-8);
+    }
+}
+
+#[test]
+fn meshes_count_every_point_once() {
+    for half_shifted in [false, true] {
+        let mesh = Mesh {
+            divisions: [4, 3, 2],
+            half_shifted,
+        };
+        let points = mesh.points();
+        let total: f64 = points.iter().map(|(_, weight)| weight).sum();
+        assert!((total - 24.0).abs() < 1e-12);
+        let at_gamma = points.iter().filter(|(q, _)| q.norm() < 1e-12).count();
+        assert_eq!(at_gamma, usize::from(!half_shifted));
+        for (k, (q, _)) in points.iter().enumerate() {
+            let twins = points.iter().skip(k + 1).filter(|(other, _)| {
+                let same = |gap: Vector3<f64>| gap.iter().all(|x| (x - x.round()).abs() < 1e-9);
+                same(q - other) || same(q + other)
+            });
+            assert_eq!(twins.count(), 0);
+        }
     }
 }
