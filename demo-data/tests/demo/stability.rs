@@ -141,6 +141,9 @@ fn the_order_of_the_forms_changes_with_temperature() {
     assert!(two[1] + 0.5 < one[1] && one[1] < three[1]);
     assert!(two[2] + 0.5 < three[2] && three[2] + 0.3 < one[2]);
     assert!(alpha[0] + 0.1 < beta[0] && beta[1] + 0.1 < alpha[1]);
+    for (k, good) in [one[0], two[1], two[2]].into_iter().enumerate() {
+        assert!(four[k] < good, "form IV at {} K", temperatures[k]);
+    }
     let energies = [
         forms::DROSMELIDE_I,
         forms::DROSMELIDE_II,
