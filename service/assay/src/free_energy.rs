@@ -1,8 +1,8 @@
 //! Free energies of one formula unit on the policy's temperature grid, each with its bracket.
 //!
 //! The central value uses λ_eff for soft modes that are called numerical. The bracket's half width is
-//! 2.5 standard deviations of the null draws + ½|their bias| + 1.4 |F(other sharing) − F(nearest images)|
-//! + F_rms(k0 + k1 T) + a floor; multiples and floor from the policy. It holds the upload's own noise, aliasing and
+//! 2.5 standard deviations of the null draws, ½|their bias|, 1.4 |F(other sharing) − F(nearest images)|,
+//! F_rms(k0 + k1 T) and a floor, added up; multiples and floor from the policy. It holds the upload's own noise, aliasing and
 //! residual force. It does not hold the level of theory, anharmonicity or expansion.
 
 use rayon::prelude::*;

@@ -117,10 +117,8 @@ pub(crate) fn bracket_finding(workup: &Workup<'_>, width: Option<f64>) -> Findin
     Finding::new(
         Rule::BracketWidth,
         severity,
-        format!(
-            "half width of the bracket at the judged temperature; it holds noise, aliasing and residual force, not the level of \
-             theory, anharmonicity or expansion"
-        ),
+        "half width of the bracket at the judged temperature; it holds noise, aliasing and residual force, not the level of \
+         theory, anharmonicity or expansion",
     )
     .measured(width, Some(limit), "kJ/mol")
     .because(LikelyCause::SmallSupercell, "a larger supercell, tighter forces and a better relaxed geometry narrow it")

@@ -62,9 +62,9 @@ impl RawGamma {
         let (mut acoustic, mut optical) = (Vec::new(), Vec::new());
         for (branch, value) in modes.eigenvalues.iter().enumerate() {
             if rigid.contains(&branch) {
-                acoustic.push(*value)
+                acoustic.push(*value);
             } else {
-                optical.push(*value)
+                optical.push(*value);
             }
         }
         let acoustic = std::array::from_fn(|k| acoustic.get(k).copied().unwrap_or_default());

@@ -106,6 +106,48 @@ pub fn image_vector(image: &ImageTranslation) -> Vector3<f64> {
     Vector3::from(image.map(f64::from))
 }
 
+/// For every (l, i, j) the images of a pair with shares that fall off with distance.
+#[derive(Debug, Clone, PartialEq)]
+pub struct ImageShares {
+    atom_count: usize,
+    first: Vec<u32>,
+    shares: Vec<(ImageTranslation, f64)>,
+}
+
+impl ImageShares {
+    /// Shares ∝ d⁻⁸, summing to one; an atom with itself keeps its constant. Images whose share is below a thousandth of
+    /// the largest are left out. Cost O(L n²).
+    pub fn inverse_power(crystal: &Crystal, supercell: &Supercell) -> Self {
+        let n = crystal.atom_count();
+        let search = ImageSearch::new(crystal, supercell);
+        let rows: Vec<Vec<Vec<(ImageTranslation, f64)>>> = (0..supercell.cell_count() * n)
+            .into_par_iter()
+            .map(|row| {
+                (0..n)
+                    .map(|j| search.inverse_power(row / n, row % n, j))
+                    .collect()
+            })
+            .collect();
+        let mut first = vec![0];
+        let mut shares = Vec::new();
+        for pair in rows.into_iter().flatten() {
+            shares.extend_from_slice(&pair);
+            first.push(u32::try_from(shares.len()).unwrap_or(u32::MAX));
+        }
+        Self {
+            atom_count: n,
+            first,
+            shares,
+        }
+    }
+
+    /// Images of the pair and their shares.
+    pub fn of(&self, cell: usize, displaced: usize, response: usize) -> &[(ImageTranslation, f64)] {
+        let pair = (cell * self.atom_count + displaced) * self.atom_count + response;
+        &self.shares[self.first[pair] as usize..self.first[pair + 1] as usize]
+    }
+}
+
 /// Length of the shortest vector of the supercell lattice, Å: the first of a Minkowski-reduced basis.
 pub fn shortest_supercell_vector_ang(crystal: &Crystal, supercell: &Supercell) -> f64 {
     let vectors = ImageSearch::new(crystal, supercell).reduced * crystal.cell();
@@ -172,6 +214,32 @@ impl<'a> ImageSearch<'a> {
                 })
             })
         })
+    }
+
+    fn inverse_power(&self, cell: usize, i: usize, j: usize) -> Vec<(ImageTranslation, f64)> {
+        /// Images nearer than this are the atom itself.
+        const SAME_ATOM_ANG: f64 = 1e-6;
+        const SMALLEST_SHARE: f64 = 1e-3;
+        let candidates: Vec<_> = self.candidates(cell, i, j).collect();
+        let shortest = candidates
+            .iter()
+            .map(|(_, d)| *d)
+            .fold(f64::INFINITY, f64::min);
+        if shortest < SAME_ATOM_ANG {
+            let own = candidates.into_iter().find(|(_, d)| *d < SAME_ATOM_ANG);
+            return own.map(|(image, _)| vec![(image, 1.0)]).unwrap_or_default();
+        }
+        let weight = |distance: f64| (shortest / distance).powi(8);
+        let mut shares: Vec<(ImageTranslation, f64)> = candidates
+            .into_iter()
+            .map(|(image, distance)| (image, weight(distance)))
+            .filter(|(_, share)| *share > SMALLEST_SHARE)
+            .collect();
+        let total: f64 = shares.iter().map(|pair| pair.1).sum();
+        for pair in &mut shares {
+            pair.1 /= total;
+        }
+        shares
     }
 
     fn nearest(
