@@ -268,23 +268,16 @@ fn sink(shared: Arc<Shared>, changes: SyncSender<Change>) -> Sink {
     Box::new(move |committed| {
         let states = {
             let mut core = shared.lock();
-            match core.ledger.apply(committed.seq, &committed.event) {
-                Ok(states) => {
-                    core.head = committed.head;
-                    states
-                }
-                Err(why) => {
-                    tracing::error!(%why, "a decided change does not follow from the trail");
-                    core.astray.get_or_insert(why);
-                    Vec::new()
-                }
-            }
+            let states = core.ledger.apply(committed.seq, &committed.event)?;
+            core.head = committed.head;
+            states
         };
         if states.iter().any(|(_, state)| *state == State::Queued) {
             shared.queued.notify_all();
         }
         // A closed channel means that the index thread is gone; the trail goes on.
         let _ = changes.send((committed, states));
+        Ok(())
     })
 }
 
@@ -310,6 +303,34 @@ fn clear(disk: &dyn Disk, root: &Path, ledger: &Ledger) -> io::Result<()> {
         }
     }
     Ok(())
+}
+
+/// Builds the index anew from the trail while the store runs.
+pub(super) fn rebuild_index(inner: &Inner) -> Result<(), OpenError> {
+    let trail = {
+        let core = inner.shared.lock();
+        Mark {
+            seq: core.ledger.last_seq,
+            head: core.head,
+        }
+    };
+    let opening = Opening {
+        disk: inner.disk(),
+        root: &inner.root,
+        trail,
+        open_limit: inner.options.index_open_limit,
+        cache_bytes: inner.options.index_cache_bytes,
+    };
+    // Frames behind the last durable one may be cut again: they come through the applier, if at all.
+    inner.index.rebuild(&opening, trail.seq, &|take| {
+        replay(inner.disk(), &inner.root, &mut |change| {
+            if change.seq <= trail.seq {
+                take(change)
+            } else {
+                Ok(())
+            }
+        })
+    })
 }
 
 /// Digest of an index built from the trail just now, in a folder that is removed again.

@@ -93,6 +93,7 @@ impl Store {
         let committed = upload
             .sync()
             .map_err(|error| inner.poisoned_by("syncing an array", &error))?;
+        upload.rest();
         Ok(status(committed, false))
     }
 

@@ -447,3 +447,30 @@ fn observers_see_every_state_in_order_and_can_be_read_by_then() {
     ];
     assert_eq!(*seen.lock().unwrap(), states.map(|state| (id, state)));
 }
+
+#[test]
+fn the_index_can_be_rebuilt_under_writers() {
+    let folder = tempfile::tempdir().unwrap();
+    let store = open(folder.path());
+    let writers: Vec<_> = (0..2_u8)
+        .map(|thread| {
+            let store = store.clone();
+            std::thread::spawn(move || {
+                for k in 0..40_u8 {
+                    let number = thread * 40 + k;
+                    let new = sample(number, &number.to_string());
+                    let id = store.create_submission(&mira(), new).unwrap().id;
+                    assert_eq!(state(&store, id), State::Draft);
+                }
+            })
+        })
+        .collect();
+    for _ in 0..4 {
+        store.rebuild_index().unwrap();
+    }
+    for writer in writers {
+        writer.join().unwrap();
+    }
+    assert_eq!(store.last_seq(), 80);
+    assert_index_is_right(&store);
+}
