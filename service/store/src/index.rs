@@ -171,6 +171,7 @@ impl Opening<'_> {
             .ok()?;
         match apply::applied(&db) {
             Ok(Some(applied)) if applied == self.trail => Some(db),
+            Ok(None) if self.trail.seq == 0 => Some(db),
             _ => None,
         }
     }

@@ -53,7 +53,6 @@ pub(super) fn open(root: PathBuf, options: Options) -> Result<Store, OpenError> 
         Ending::Damaged(damage) => Some(damage.clone()),
         Ending::Whole | Ending::Torn { .. } => None,
     };
-    scan::cut_tail(disk.as_ref(), &root, &mut walked.scan)?;
     let mark = Mark {
         seq: walked.scan.last_seq,
         head: walked.scan.head,
@@ -65,6 +64,9 @@ pub(super) fn open(root: PathBuf, options: Options) -> Result<Store, OpenError> 
     };
     let objects = Objects::new(Arc::clone(&disk), &root);
     let clean_stop = clean.as_ref().is_some_and(|clean| clean.mark == mark);
+    if damage.is_none() {
+        scan::settle_tail(disk.as_ref(), &root, &mut walked.scan, clean_stop)?;
+    }
     let missing = check_objects(&objects, &walked, clean_stop, &options)
         .map_err(failed("looking for objects"))?;
     if !missing.is_empty() && !options.tolerate_missing_objects {

@@ -90,9 +90,7 @@ impl Store {
             let (_, declared, stored) = inner.declared(id, name)?;
             return Ok(status(declared.size, stored));
         }
-        let committed = upload
-            .sync()
-            .map_err(|error| inner.poisoned_by("syncing an array", &error))?;
+        let committed = inner.sync_upload(&mut upload)?;
         upload.rest();
         Ok(status(committed, false))
     }
@@ -237,9 +235,7 @@ impl Inner {
         }
         let reading = |error| StoreError::io("reading a partial array", error);
         upload.settle().map_err(reading)?;
-        upload
-            .sync()
-            .map_err(|error| self.poisoned_by("syncing an array", &error))?;
+        self.sync_upload(upload)?;
         if upload.length() > declared.size || upload.digest().map_err(reading)? != declared.digest {
             upload
                 .discard()
@@ -251,6 +247,15 @@ impl Inner {
             .map_err(|error| self.refused(error))?;
         upload.adopted = true;
         Ok(())
+    }
+
+    /// Makes what arrived durable. After a failure nobody knows what of it is on the disk, so all of it is dropped: a
+    /// later sync, even in a new process, might succeed without writing it.
+    fn sync_upload(&self, upload: &mut Upload) -> Result<u64, StoreError> {
+        upload.sync().map_err(|error| {
+            let _ = upload.discard();
+            self.poisoned_by("syncing an array", &error)
+        })
     }
 
     /// Drops a partial upload for good; what cannot be removed now is removed at the next start.
