@@ -67,7 +67,7 @@ impl Default for Options {
             }),
             segment_bytes_max: 32 << 20,
             read_wait: Duration::from_secs(5),
-            index_open_limit: Duration::from_secs(60),
+            index_open_limit: Duration::from_mins(1),
             index_cache_bytes: 64 << 20,
             tolerate_missing_objects: false,
         }

@@ -46,7 +46,7 @@ impl Store {
         let mut upload = hold(&upload);
         // It may have been finished while this call waited.
         inner.expected(id, name)?;
-        inner.alive(&upload, id, name)?;
+        alive(&upload, id, name)?;
         let end = offset.saturating_add(bytes.len() as u64);
         if offset != upload.length() {
             return Err(StoreError::WrongOffset {
@@ -160,7 +160,7 @@ impl Store {
         inner.expected(id, name)?;
         let upload = inner.upload(id, name)?;
         let mut upload = hold(&upload);
-        inner.alive(&upload, id, name)?;
+        alive(&upload, id, name)?;
         upload
             .discard()
             .map_err(|error| StoreError::io("dropping a partial array", error))
@@ -169,6 +169,17 @@ impl Store {
 
 fn hold(upload: &Arc<Mutex<Upload>>) -> MutexGuard<'_, Upload> {
     upload.lock().unwrap_or_else(PoisonError::into_inner)
+}
+
+/// Fails if an upload is over.
+fn alive(upload: &Upload, id: SubmissionId, name: &str) -> Result<(), StoreError> {
+    if upload.done || upload.adopted {
+        return Err(StoreError::AlreadyStored {
+            id,
+            name: name.to_owned(),
+        });
+    }
+    Ok(())
 }
 
 impl Inner {
@@ -211,16 +222,6 @@ impl Inner {
         self.uploads
             .get(id, name)
             .map_err(|error| StoreError::io("opening a partial array", error))
-    }
-
-    fn alive(&self, upload: &Upload, id: SubmissionId, name: &str) -> Result<(), StoreError> {
-        if upload.done || upload.adopted {
-            return Err(StoreError::AlreadyStored {
-                id,
-                name: name.to_owned(),
-            });
-        }
-        Ok(())
     }
 
     /// Compares what arrived with what was declared and makes it an object.

@@ -66,9 +66,12 @@ pub(crate) struct Tail {
     pub(crate) segment_bytes_max: u64,
 }
 
+/// A proposal and where its answer goes.
+type Waiting = (Proposal, SyncSender<Result<u64, CommitError>>);
+
 #[derive(Debug, Default)]
 struct Queue {
-    waiting: VecDeque<(Proposal, SyncSender<Result<u64, CommitError>>)>,
+    waiting: VecDeque<Waiting>,
     closed: bool,
     poisoned: Option<String>,
 }
@@ -219,8 +222,6 @@ fn run(shared: &Shared, mut pen: Pen) {
     }
 }
 
-type Waiting = (Proposal, SyncSender<Result<u64, CommitError>>);
-
 impl Pen {
     /// Writes as much of the batch as fits one sync, and answers.
     fn round(&mut self, shared: &Shared, batch: &mut VecDeque<Waiting>) {
@@ -249,7 +250,7 @@ impl Pen {
             let (encoded, hash) = frame.encode(&head);
             bytes.extend_from_slice(&encoded);
             head = hash;
-            written.push((seq, hash, proposal, reply));
+            written.push((seq, hash, (proposal, reply)));
             if bytes.len() > BATCH_BYTES_MAX {
                 break;
             }
@@ -267,7 +268,7 @@ impl Pen {
                 let late = batch.drain(..).map(|(_, reply)| reply);
                 for reply in written
                     .into_iter()
-                    .map(|(_, _, _, reply)| reply)
+                    .map(|(_, _, (_, reply))| reply)
                     .chain(late)
                 {
                     let _ = reply.send(Err(error.clone()));
@@ -279,7 +280,7 @@ impl Pen {
     fn answer(
         &mut self,
         shared: &Shared,
-        written: Vec<(u64, Digest, Proposal, SyncSender<Result<u64, CommitError>>)>,
+        written: Vec<(u64, Digest, Waiting)>,
         seq: u64,
         head: Digest,
     ) {
@@ -287,7 +288,7 @@ impl Pen {
         self.tail.head = head;
         let due = self.anchor.advance(&Mark { seq, head });
         let mut replies = Vec::with_capacity(written.len());
-        for (seq, head, proposal, reply) in written {
+        for (seq, head, (proposal, reply)) in written {
             let taken = (self.sink)(Committed {
                 seq,
                 head,

@@ -9,7 +9,8 @@ use tarehouse_store::{Health, State, Store, StoreError, SubmissionId};
 
 use crate::sim_disk::{Fault, Leave, SimDisk};
 use crate::support::{
-    ARRAY, assert_index_is_right, content, mira, options_on, outcome, sample, send, state, worker,
+    ARRAY, assert_index_is_right, content, mira, options_on, outcome, sample, scratch, send, state,
+    worker,
 };
 
 /// What was answered for, and what may have happened besides.
@@ -127,7 +128,7 @@ pub(crate) fn day(root: &Path, disk: &SimDisk, journal: &mut Journal) {
 
 /// Calls of a day without faults.
 pub(crate) fn calls_of_a_day() -> u64 {
-    let folder = tempfile::tempdir().unwrap();
+    let folder = scratch();
     let root = folder.path().join("store");
     let disk = SimDisk::new(&root);
     let mut journal = Journal::default();
@@ -143,7 +144,7 @@ fn a_fault_at_every_call_loses_nothing() {
     let mut answered = 0;
     for fault in [Fault::Error, Fault::NoSpace, Fault::Short] {
         for call in 1..=calls {
-            let folder = tempfile::tempdir().unwrap();
+            let folder = scratch();
             let root = folder.path().join("store");
             let disk = SimDisk::new(&root);
             disk.fail_at(call, fault);
@@ -170,7 +171,7 @@ fn a_fault_at_every_call_loses_nothing() {
 
 #[test]
 fn a_failed_sync_of_the_trail_stops_all_answers() {
-    let folder = tempfile::tempdir().unwrap();
+    let folder = scratch();
     let root = folder.path().join("store");
     let disk = SimDisk::new(&root);
     let store = Store::open(&root, options_on(Arc::new(disk.clone()))).unwrap();
@@ -187,7 +188,7 @@ fn a_failed_sync_of_the_trail_stops_all_answers() {
 
 #[test]
 fn no_space_changes_nothing_and_passes() {
-    let folder = tempfile::tempdir().unwrap();
+    let folder = scratch();
     let root = folder.path().join("store");
     let disk = SimDisk::new(&root);
     let store = Store::open(&root, options_on(Arc::new(disk.clone()))).unwrap();

@@ -1,5 +1,12 @@
 //! Tests of the store as its users see it, on a real and on a simulated disk.
 
+#![allow(
+    clippy::unwrap_used,
+    clippy::expect_used,
+    clippy::panic,
+    reason = "a test fails by panicking"
+)]
+
 mod damage;
 mod faults;
 mod lifecycle;
@@ -8,3 +15,4 @@ mod model;
 mod power;
 mod sim_disk;
 mod support;
+mod uploads;

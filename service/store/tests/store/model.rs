@@ -10,7 +10,9 @@ use tarehouse_store::{
 };
 
 use crate::sim_disk::{Leave, SimDisk};
-use crate::support::{ARRAY, assert_index_is_right, content, options_on, outcome, sample, worker};
+use crate::support::{
+    ARRAY, assert_index_is_right, content, options_on, outcome, sample, scratch, worker,
+};
 
 #[derive(Debug, Clone)]
 enum Step {
@@ -262,7 +264,7 @@ impl Model {
 }
 
 fn run(steps: Vec<Step>) {
-    let folder = tempfile::tempdir().unwrap();
+    let folder = scratch();
     let root = folder.path().join("store");
     let disk = SimDisk::new(&root);
     let open = || Store::open(&root, options_on(Arc::new(disk.clone()))).unwrap();

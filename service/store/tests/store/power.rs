@@ -6,14 +6,14 @@ use tarehouse_store::{Health, Store};
 
 use crate::faults::{Journal, calls_of_a_day, day};
 use crate::sim_disk::{Fault, Leave, SimDisk};
-use crate::support::{assert_index_is_right, options_on};
+use crate::support::{assert_index_is_right, options_on, scratch};
 
 #[test]
 fn a_power_cut_at_every_call_loses_nothing() {
     let calls = calls_of_a_day();
     for leave in [Leave::Nothing, Leave::Half] {
         for call in 1..=calls {
-            let folder = tempfile::tempdir().unwrap();
+            let folder = scratch();
             let root = folder.path().join("store");
             let disk = SimDisk::new(&root);
             disk.fail_at(call, Fault::Kill);
@@ -38,7 +38,7 @@ fn a_power_cut_at_every_call_loses_nothing() {
 /// The negative control: with syncs that do nothing the same test sees losses.
 #[test]
 fn without_syncs_a_power_cut_is_seen_to_lose() {
-    let folder = tempfile::tempdir().unwrap();
+    let folder = scratch();
     let root = folder.path().join("store");
     let disk = SimDisk::new(&root);
     disk.ignore_sync();
@@ -56,7 +56,7 @@ fn without_syncs_a_power_cut_is_seen_to_lose() {
 /// A clean stop makes the index durable too, although its database does not.
 #[test]
 fn after_a_clean_stop_and_a_power_cut_the_index_is_trusted() {
-    let folder = tempfile::tempdir().unwrap();
+    let folder = scratch();
     let root = folder.path().join("store");
     let disk = SimDisk::new(&root);
     let open = || Store::open(&root, options_on(Arc::new(disk.clone()))).unwrap();

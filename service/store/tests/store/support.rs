@@ -12,6 +12,12 @@ use tarehouse_store::{
     StoreError, SubmissionId,
 };
 
+/// A scratch folder in memory where there is such a place: the simulated disk syncs nothing, but the embedded database
+/// does, hundreds of times.
+pub(crate) fn scratch() -> tempfile::TempDir {
+    tempfile::tempdir_in("/dev/shm").unwrap_or_else(|_| tempfile::tempdir().unwrap())
+}
+
 /// Options with a counting clock and small segments, so that they are sealed often.
 pub(crate) fn options() -> Options {
     let clock = AtomicU64::new(1_000);
