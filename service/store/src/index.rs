@@ -35,6 +35,8 @@ pub(crate) type Change = (Committed, Vec<(SubmissionId, State)>);
 
 /// Changes applied in one transaction.
 const CHUNK: usize = 256;
+/// How long the database's threads may go on after it was let go.
+const RELEASE_LIMIT: Duration = Duration::from_secs(10);
 
 /// Reads the trail from its start and hands over every change.
 pub(crate) type Replay<'a> =
@@ -219,6 +221,21 @@ impl Opening<'_> {
     }
 }
 
+/// Waits until nobody holds the database's file: its own threads may write on for a moment after it was let go.
+fn wait_until_released(disk: &dyn Disk, file: &Path) -> std::io::Result<()> {
+    let deadline = Instant::now() + RELEASE_LIMIT;
+    loop {
+        match disk.lock(file) {
+            Err(error)
+                if error.kind() == std::io::ErrorKind::WouldBlock && Instant::now() < deadline =>
+            {
+                std::thread::sleep(Duration::from_millis(1));
+            }
+            other => return other.map(drop),
+        }
+    }
+}
+
 /// Applies the whole trail to an empty database.
 pub(crate) fn fill(db: &sled::Db, replay: Replay<'_>) -> Result<(), OpenError> {
     let failed = |detail: String| OpenError::Index { detail };
@@ -383,6 +400,7 @@ impl Index {
             .lock()
             .unwrap_or_else(PoisonError::into_inner);
         let path = self.folder.join(generation_name(generation));
+        wait_until_released(disk, &path.join("db"))?;
         clean::write(disk, &self.folder, &path, generation, trail)
     }
 
