@@ -98,6 +98,8 @@ pub(crate) enum Failure {
         reason: &'static str,
         message: String,
         breaches: Vec<Breach>,
+        /// Breaches beyond those listed.
+        unlisted_count: usize,
     },
     /// What was asked for is not there.
     NotFound {
@@ -108,6 +110,7 @@ pub(crate) enum Failure {
     Conflict {
         reason: &'static str,
         message: String,
+        retry_after: Option<Duration>,
     },
     /// The request id stands for something else.
     Exists {
