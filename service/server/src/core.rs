@@ -3,11 +3,11 @@
 use std::sync::Arc;
 use std::time::Duration;
 
+use tarehouse_proto::{package, v1};
 use tarehouse_store::{
     Actor, NewSubmission, Options, PageRequest, State, Store, StoreError, SubmissionFilter,
     SubmissionId, SubmissionView,
 };
-use tarehouse_proto::{package, v1};
 use tokio::sync::{Mutex, Notify, OwnedSemaphorePermit, Semaphore};
 
 use crate::config::Config;
@@ -74,7 +74,9 @@ pub(crate) struct Core {
 
 impl std::fmt::Debug for Core {
     fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
-        f.debug_struct("Core").field("config", &self.config).finish_non_exhaustive()
+        f.debug_struct("Core")
+            .field("config", &self.config)
+            .finish_non_exhaustive()
     }
 }
 
@@ -130,7 +132,10 @@ impl Core {
     /// Closes the store; what is acknowledged is durable with or without it.
     pub(crate) async fn close(&self) {
         if let Err(failure) = self.depot.ask(|store| store.close()).await {
-            tracing::warn!(?failure, "the store was not closed cleanly; its index is built anew");
+            tracing::warn!(
+                ?failure,
+                "the store was not closed cleanly; its index is built anew"
+            );
         }
     }
 
@@ -146,7 +151,10 @@ impl Core {
 
     /// A place among those that compute.
     pub(crate) async fn cpu_slot(&self) -> Result<OwnedSemaphorePermit, Failure> {
-        Arc::clone(&self.cpu).acquire_owned().await.map_err(Failure::internal)
+        Arc::clone(&self.cpu)
+            .acquire_owned()
+            .await
+            .map_err(Failure::internal)
     }
 
     /// Computes on a blocking thread when there is a place.
@@ -166,12 +174,20 @@ impl Core {
 
     /// A place among the watches.
     pub(crate) fn watch_permit(&self) -> Result<OwnedSemaphorePermit, Failure> {
-        permit(&self.watches, reason::WATCHES_FULL, "too many watches are open; ask for the state instead")
+        permit(
+            &self.watches,
+            reason::WATCHES_FULL,
+            "too many watches are open; ask for the state instead",
+        )
     }
 
     /// A place among the downloads.
     pub(crate) fn fetch_permit(&self) -> Result<OwnedSemaphorePermit, Failure> {
-        permit(&self.fetches, reason::FETCHES_FULL, "too many arrays are being fetched")
+        permit(
+            &self.fetches,
+            reason::FETCHES_FULL,
+            "too many arrays are being fetched",
+        )
     }
 
     /// A submission.
@@ -189,10 +205,7 @@ impl Core {
     }
 
     /// A submission that was read before, as the contract tells it.
-    pub(crate) async fn message_of(
-        &self,
-        view: SubmissionView,
-    ) -> Result<v1::Submission, Failure> {
+    pub(crate) async fn message_of(&self, view: SubmissionView) -> Result<v1::Submission, Failure> {
         let report = match view.report {
             Some(_) => Some(self.report_facts(&view).await?),
             None => None,
@@ -214,7 +227,9 @@ impl Core {
                     if state != State::Draft {
                         return Ok(0);
                     }
-                    store.array_status(id, &array.declared.name).map(|status| status.committed_bytes)
+                    store
+                        .array_status(id, &array.declared.name)
+                        .map(|status| status.committed_bytes)
                 };
                 arrays.iter().map(of).collect()
             })
@@ -234,8 +249,12 @@ impl Core {
         let summary = self
             .compute(move || package::check_manifest(&bytes))
             .await?
-            .map_err(|violations| Failure::internal(format!("stored manifest {id}: {violations}")))?;
-        Ok(self.manifests.keep(&view.manifest.digest, ManifestFacts::of(&summary)))
+            .map_err(|violations| {
+                Failure::internal(format!("stored manifest {id}: {violations}"))
+            })?;
+        Ok(self
+            .manifests
+            .keep(&view.manifest.digest, ManifestFacts::of(&summary)))
     }
 
     /// What the report of a submission says; nothing where there is none.
@@ -293,7 +312,10 @@ impl Core {
         let _one_at_a_time = self.sealing.lock().await;
         self.check_queue_room()?;
         let actor = self.actor_of(principal);
-        self.depot.ask(move |store| store.seal(&actor, id)).await.map(drop)
+        self.depot
+            .ask(move |store| store.seal(&actor, id))
+            .await
+            .map(drop)
     }
 
     /// Refuses a draft beyond the principal's quota; one that is open already is let through.
@@ -308,14 +330,24 @@ impl Core {
             contributor: Some(principal.0.clone()),
             compound: None,
         };
-        let (mut count, mut page) = (0, PageRequest { size: quota, token: String::new() });
+        let (mut count, mut page) = (
+            0,
+            PageRequest {
+                size: quota,
+                token: String::new(),
+            },
+        );
         loop {
             let (filter, request) = (filter.clone(), page.clone());
             let drafts = self
                 .depot
                 .ask(move |store| store.list_submissions(&filter, &request))
                 .await?;
-            if drafts.entries.iter().any(|draft| draft.package_digest == new.package_digest) {
+            if drafts
+                .entries
+                .iter()
+                .any(|draft| draft.package_digest == new.package_digest)
+            {
                 return Ok(());
             }
             count += drafts.entries.len();
@@ -342,9 +374,11 @@ pub(crate) fn permit(
     reason: &'static str,
     message: &str,
 ) -> Result<OwnedSemaphorePermit, Failure> {
-    Arc::clone(of).try_acquire_owned().map_err(|_| Failure::Unavailable {
-        reason,
-        message: message.to_owned(),
-        retry_after: RETRY_AFTER,
-    })
+    Arc::clone(of)
+        .try_acquire_owned()
+        .map_err(|_| Failure::Unavailable {
+            reason,
+            message: message.to_owned(),
+            retry_after: RETRY_AFTER,
+        })
 }

@@ -34,7 +34,9 @@ impl Depot {
         &self,
         call: impl FnOnce(&Store) -> Result<T, StoreError> + Send + 'static,
     ) -> Result<T, Failure> {
-        self.ask_plainly(call).await.and_then(|answer| answer.map_err(Failure::from))
+        self.ask_plainly(call)
+            .await
+            .and_then(|answer| answer.map_err(Failure::from))
     }
 
     /// As [`Depot::ask`], with the store's own error.
@@ -42,7 +44,10 @@ impl Depot {
         &self,
         call: impl FnOnce(&Store) -> Result<T, StoreError> + Send + 'static,
     ) -> Result<Result<T, StoreError>, Failure> {
-        let slot = Arc::clone(&self.slots).acquire_owned().await.map_err(Failure::internal)?;
+        let slot = Arc::clone(&self.slots)
+            .acquire_owned()
+            .await
+            .map_err(Failure::internal)?;
         let store = self.store.clone();
         let answer = tokio::task::spawn_blocking(move || {
             let answer = call(&store);

@@ -90,7 +90,10 @@ impl ReportFacts {
     pub(crate) fn of(report: v1::Report) -> Self {
         let count = |n: usize| u32::try_from(n).unwrap_or(u32::MAX);
         let caution = v1::Severity::Caution as i32;
-        let cautions = report.findings.iter().filter(|finding| finding.severity == caution);
+        let cautions = report
+            .findings
+            .iter()
+            .filter(|finding| finding.severity == caution);
         Self {
             caution_count: count(cautions.count()),
             soft_mode_count: count(report.soft_modes.len()),
@@ -115,7 +118,9 @@ pub(crate) struct Memory<T> {
 
 impl<T> Default for Memory<T> {
     fn default() -> Self {
-        Self { known: Mutex::default() }
+        Self {
+            known: Mutex::default(),
+        }
     }
 }
 
@@ -161,8 +166,14 @@ mod tests {
 
     #[test]
     fn an_energy_without_its_own_level_has_that_of_the_constants() {
-        let constants = LevelParts { functional: Some("A".into()), ..LevelParts::default() };
-        let own = LevelParts { functional: Some("B".into()), ..LevelParts::default() };
+        let constants = LevelParts {
+            functional: Some("A".into()),
+            ..LevelParts::default()
+        };
+        let own = LevelParts {
+            functional: Some("B".into()),
+            ..LevelParts::default()
+        };
         assert!(energy_level(None, &constants).starts_with("a /"));
         assert!(energy_level(Some(&own), &constants).starts_with("b /"));
     }

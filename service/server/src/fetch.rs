@@ -34,7 +34,10 @@ impl Source {
     pub(crate) fn of(array: &str, treatment: v1::Treatment) -> Result<Self, Failure> {
         match (treatment, array) {
             (v1::Treatment::Projected, array) => Ok(Self::Projected(array.to_owned())),
-            (_, "") => Err(Failure::field("array", "the file name of an array is wanted")),
+            (_, "") => Err(Failure::field(
+                "array",
+                "the file name of an array is wanted",
+            )),
             (_, MANIFEST_FILE) => Ok(Self::Manifest),
             (_, array) => Ok(Self::Array(array.to_owned())),
         }
@@ -71,9 +74,15 @@ impl Fetch {
         let (name, object, content) = match source {
             Source::Manifest => {
                 let bytes = core.depot.ask(move |store| store.read_manifest(id)).await?;
-                let start = usize::try_from(offset_bytes).unwrap_or(usize::MAX).min(bytes.len());
+                let start = usize::try_from(offset_bytes)
+                    .unwrap_or(usize::MAX)
+                    .min(bytes.len());
                 let rest = Bytes::from(bytes).slice(start..);
-                (MANIFEST_FILE.to_owned(), view.manifest, Content::AtHand(rest))
+                (
+                    MANIFEST_FILE.to_owned(),
+                    view.manifest,
+                    Content::AtHand(rest),
+                )
             }
             Source::Array(name) => {
                 let array = name.clone();
@@ -83,10 +92,17 @@ impl Fetch {
             Source::Projected(name) => {
                 let constants = core.manifest_facts(&view).await?.constants_file.clone();
                 if !name.is_empty() && name != constants {
-                    return Err(Failure::field("array", "only the force constants are projected"));
+                    return Err(Failure::field(
+                        "array",
+                        "only the force constants are projected",
+                    ));
                 }
                 let reader = open_stored(core, move |store| store.open_projected(id)).await?;
-                (constants, reader.object(), Content::Stored(Box::new(reader)))
+                (
+                    constants,
+                    reader.object(),
+                    Content::Stored(Box::new(reader)),
+                )
             }
         };
         if offset_bytes > object.size {
@@ -122,7 +138,11 @@ impl Fetch {
             return Ok(());
         }
         while let Some(data) = self.next(core).await? {
-            let chunk = v1::Chunk { offset_bytes, crc32: crc32fast::hash(&data), data };
+            let chunk = v1::Chunk {
+                offset_bytes,
+                crc32: crc32fast::hash(&data),
+                data,
+            };
             offset_bytes += chunk.data.len() as u64;
             if !tell(core, &frames, Frame::Chunk(chunk)).await? {
                 return Ok(());
@@ -156,7 +176,9 @@ impl Fetch {
             self.content = Content::Stored(reader);
             let Some(part) = part else { return Ok(None) };
             let mut part = Bytes::from(part);
-            let skipped = part.len().min(usize::try_from(self.skip_bytes).unwrap_or(usize::MAX));
+            let skipped = part
+                .len()
+                .min(usize::try_from(self.skip_bytes).unwrap_or(usize::MAX));
             self.skip_bytes -= skipped as u64;
             let rest = part.split_off(skipped);
             if !rest.is_empty() {
@@ -170,13 +192,16 @@ async fn open_stored(
     core: &Core,
     open: impl FnOnce(&tarehouse_store::Store) -> Result<ObjectReader, StoreError> + Send + 'static,
 ) -> Result<ObjectReader, Failure> {
-    core.depot.ask_plainly(open).await?.map_err(|error| match error {
-        StoreError::NotThereYet { what, .. } => Failure::NotFound {
-            reason: reason::ARRAY_NOT_FOUND,
-            message: format!("{what} is not there yet"),
-        },
-        other => Failure::from(other),
-    })
+    core.depot
+        .ask_plainly(open)
+        .await?
+        .map_err(|error| match error {
+            StoreError::NotThereYet { what, .. } => Failure::NotFound {
+                reason: reason::ARRAY_NOT_FOUND,
+                message: format!("{what} is not there yet"),
+            },
+            other => Failure::from(other),
+        })
 }
 
 fn header(array: String, object: ObjectRef, offset_bytes: u64) -> v1::FetchArrayHeader {

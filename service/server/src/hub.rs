@@ -63,7 +63,10 @@ impl Hub {
     fn set_stage(&self, id: SubmissionId, stage: Option<Stage>) {
         let mut boards = self.boards();
         if stage.is_some() || boards.contains_key(&id) {
-            boards.entry(id).or_default().send_modify(|news| news.stage = stage);
+            boards
+                .entry(id)
+                .or_default()
+                .send_modify(|news| news.stage = stage);
         }
         if stage.is_none() && boards.get(&id).is_some_and(|board| !in_use(board)) {
             boards.remove(&id);
@@ -95,7 +98,12 @@ impl Reporter {
 impl Progress for Reporter {
     fn advance(&self, stage: &'static str, done: usize, total: usize) {
         let attempt = self.attempt;
-        let stage = Stage { name: stage, done, total, attempt };
+        let stage = Stage {
+            name: stage,
+            done,
+            total,
+            attempt,
+        };
         self.hub.set_stage(self.id, Some(stage));
     }
 }
@@ -118,7 +126,10 @@ mod tests {
         reporter.advance("mesh", 3, 9);
         let board = hub.watch(id);
         let stage = board.borrow().stage.unwrap();
-        assert_eq!((stage.name, stage.done, stage.total, stage.attempt), ("mesh", 3, 9, 2));
+        assert_eq!(
+            (stage.name, stage.done, stage.total, stage.attempt),
+            ("mesh", 3, 9, 2)
+        );
         drop(reporter);
         assert_eq!(board.borrow().stage, None);
         drop(board);

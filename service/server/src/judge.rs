@@ -87,7 +87,11 @@ fn outcome(submission: &Submission, report: Report) -> Outcome {
 fn summary(submission: &Submission, report: &Report) -> RecordSummary {
     let constants = &submission.settings.level;
     let fits = report.free_energy.len() <= SUMMARY_TEMPERATURES_MAX;
-    let curve = if fits { report.free_energy.as_slice() } else { &[] };
+    let curve = if fits {
+        report.free_energy.as_slice()
+    } else {
+        &[]
+    };
     RecordSummary {
         level: constants.key(),
         energy_level: facts::energy_level(submission.energy.level.as_ref(), constants),
@@ -98,7 +102,10 @@ fn summary(submission: &Submission, report: &Report) -> RecordSummary {
         central_kj_per_mol: curve.iter().map(|point| point.central_kj_per_mol).collect(),
         lower_kj_per_mol: curve.iter().map(|point| point.lower_kj_per_mol).collect(),
         upper_kj_per_mol: curve.iter().map(|point| point.upper_kj_per_mol).collect(),
-        entropy_j_per_mol_k: curve.iter().map(|point| point.entropy_j_per_mol_k).collect(),
+        entropy_j_per_mol_k: curve
+            .iter()
+            .map(|point| point.entropy_j_per_mol_k)
+            .collect(),
         density_g_per_cm3: Some(report.crystal.density_g_per_cm3),
         space_group_number: Some(report.crystal.space_group_number),
     }

@@ -29,7 +29,10 @@ pub const TEXT_BYTES_MAX: usize = 1024;
     reason = "the limits of the contract are checked to be small at compile time"
 )]
 const fn narrow(limit: u64) -> usize {
-    assert!(limit <= u32::MAX as u64, "a limit of the contract is too large");
+    assert!(
+        limit <= u32::MAX as u64,
+        "a limit of the contract is too large"
+    );
     limit as usize
 }
 

@@ -28,7 +28,8 @@ impl Resource {
     /// Reads either kind of name from the field `field`.
     pub(crate) fn parse(field: &str, name: &str) -> Result<Self, Failure> {
         let wanted = || {
-            let message = "submissions/{id} or records/{id} is wanted, with 32 lower-case hexadecimal digits";
+            let message =
+                "submissions/{id} or records/{id} is wanted, with 32 lower-case hexadecimal digits";
             Failure::field(field, message)
         };
         let (kind, id) = name.split_once('/').ok_or_else(wanted)?;
@@ -88,7 +89,9 @@ pub(crate) mod token {
     pub(crate) fn wrap(filter: &str, inner: &str) -> String {
         match inner {
             "" => String::new(),
-            inner => format!("{}{inner}", mark(filter)),
+            inner => inner
+                .bytes()
+                .fold(mark(filter), |token, byte| format!("{token}{byte:02x}")),
         }
     }
 
@@ -100,10 +103,19 @@ pub(crate) mod token {
         let refuse = |message: &str| Failure::field("page_token", message);
         match token.split_at_checked(MARK_DIGITS) {
             _ if token.len() > TOKEN_BYTES_MAX => Err(refuse("not made by this service")),
-            Some((found, inner)) if found == mark(filter) => Ok(inner.to_owned()),
+            Some((found, inner)) if found == mark(filter) => {
+                text_of(inner).ok_or_else(|| refuse("not made by this service"))
+            }
             Some(_) => Err(refuse("made with another filter, or not by this service")),
             None => Err(refuse("not made by this service")),
         }
+    }
+
+    fn text_of(digits: &str) -> Option<String> {
+        let (pairs, rest) = digits.as_bytes().as_chunks::<2>();
+        let byte = |pair: &[u8; 2]| u8::from_str_radix(std::str::from_utf8(pair).ok()?, 16).ok();
+        let bytes: Option<Vec<u8>> = pairs.iter().map(byte).collect();
+        String::from_utf8(bytes.filter(|_| rest.is_empty())?).ok()
     }
 
     fn mark(filter: &str) -> String {
@@ -122,7 +134,14 @@ mod tests {
         let id = SubmissionId::from_bytes([0xab; 16]);
         assert_eq!(parse_submission("name", &submission(id)), Ok(id));
         assert_eq!(parse_record("name", &record(id)), Ok(id));
-        for bad in ["", "submissions/", "submissions", "drafts/00", "submissions/..", "records/xyz"] {
+        for bad in [
+            "",
+            "submissions/",
+            "submissions",
+            "drafts/00",
+            "submissions/..",
+            "records/xyz",
+        ] {
             assert!(parse_submission("name", bad).is_err(), "{bad}");
         }
         assert!(parse_submission("name", &record(id)).is_err());
@@ -134,7 +153,17 @@ mod tests {
         let max = limits::PAGE_SIZE_MAX;
         let found = [0, 1, max - 1, max, max + 1, u32::MAX].map(page_size);
         let max = max as usize;
-        assert_eq!(found, [limits::PAGE_SIZE_DEFAULT as usize, 1, max - 1, max, max, max]);
+        assert_eq!(
+            found,
+            [
+                limits::PAGE_SIZE_DEFAULT as usize,
+                1,
+                max - 1,
+                max,
+                max,
+                max
+            ]
+        );
     }
 
     #[test]
@@ -143,6 +172,8 @@ mod tests {
         assert_eq!(token::unwrap("a", &made), Ok("inner".to_owned()));
         assert!(token::unwrap("b", &made).is_err());
         assert!(token::unwrap("a", "short").is_err());
+        assert!(token::unwrap("a", &format!("{made}0")).is_err());
+        assert!(token::unwrap("a", &made.replace("69", "xx")).is_err());
         assert_eq!(token::wrap("a", ""), "");
     }
 

@@ -81,7 +81,11 @@ fn table(level: LevelKey, forms: Vec<Candidate>, temperatures_k: &[f64]) -> v1::
     let mut rows: Vec<v1::RankRow> = forms
         .into_iter()
         .zip(points)
-        .map(|(form, points)| v1::RankRow { record: form.record, form: form.form, points })
+        .map(|(form, points)| v1::RankRow {
+            record: form.record,
+            form: form.form,
+            points,
+        })
         .collect();
     // The sort is stable, so that equal and undefined forms keep the order of their labels.
     rows.sort_by(|a, b| first_energy(a).total_cmp(&first_energy(b)));
@@ -95,13 +99,18 @@ fn table(level: LevelKey, forms: Vec<Candidate>, temperatures_k: &[f64]) -> v1::
 
 /// What a row is sorted by; forms without a free energy come last.
 fn first_energy(row: &v1::RankRow) -> f64 {
-    row.points.first().and_then(|point| point.relative_kj_per_mol).unwrap_or(f64::INFINITY)
+    row.points
+        .first()
+        .and_then(|point| point.relative_kj_per_mol)
+        .unwrap_or(f64::INFINITY)
 }
 
 /// All forms at one temperature.
 fn column(forms: &[Candidate], temperature_k: f64) -> Vec<v1::RankPoint> {
-    let energies: Vec<Result<Energy, String>> =
-        forms.iter().map(|form| energy_at(&form.free_energy, temperature_k)).collect();
+    let energies: Vec<Result<Energy, String>> = forms
+        .iter()
+        .map(|form| energy_at(&form.free_energy, temperature_k))
+        .collect();
     let totals: Vec<Option<f64>> = forms
         .iter()
         .zip(&energies)
@@ -110,14 +119,22 @@ fn column(forms: &[Candidate], temperature_k: f64) -> Vec<v1::RankPoint> {
             Some(form.lattice_energy_kj_per_mol + energy.vibrational)
         })
         .collect();
-    let lowest = totals.iter().flatten().copied().fold(f64::INFINITY, f64::min);
+    let lowest = totals
+        .iter()
+        .flatten()
+        .copied()
+        .fold(f64::INFINITY, f64::min);
     forms
         .iter()
         .zip(energies)
         .zip(&totals)
         .map(|((form, energy), total)| match (energy, total) {
             (Ok(energy), Some(total)) => {
-                let lower_count = totals.iter().flatten().filter(|other| *other < total).count();
+                let lower_count = totals
+                    .iter()
+                    .flatten()
+                    .filter(|other| *other < total)
+                    .count();
                 v1::RankPoint {
                     rank: u32::try_from(lower_count + 1).unwrap_or(u32::MAX),
                     ..ranked(form, energy, total - lowest, temperature_k)
@@ -158,7 +175,10 @@ fn energy_at(grid: &[v1::FreeEnergy], temperature_k: f64) -> Result<Energy, Stri
     if high.temperature_k.total_cmp(&temperature_k) == Ordering::Equal {
         return defined(high).map(|point| at_node(point));
     }
-    let low = above.checked_sub(1).and_then(|below| grid.get(below)).ok_or_else(outside)?;
+    let low = above
+        .checked_sub(1)
+        .and_then(|below| grid.get(below))
+        .ok_or_else(outside)?;
     let (low, high) = (defined(low)?, defined(high)?);
     let both = |of: fn(&v1::FreeEnergy) -> f64| vec![of(low), of(high)];
     let curve = FreeEnergyCurve::new(
@@ -167,7 +187,9 @@ fn energy_at(grid: &[v1::FreeEnergy], temperature_k: f64) -> Result<Energy, Stri
         both(|point| point.entropy_j_per_mol_k / 1000.0),
     )
     .map_err(|_| "its stored free energies are no curve".to_owned())?;
-    let vibrational = curve.free_energy(temperature_k).map_err(|error| error.to_string())?;
+    let vibrational = curve
+        .free_energy(temperature_k)
+        .map_err(|error| error.to_string())?;
     let share = (temperature_k - low.temperature_k) / (high.temperature_k - low.temperature_k);
     let between = |a: f64, b: f64| a + share * (b - a);
     let (first, last) = (at_node(low), at_node(high));
@@ -188,7 +210,10 @@ fn defined(point: &v1::FreeEnergy) -> Result<&v1::FreeEnergy, String> {
     if point.defined {
         Ok(point)
     } else {
-        Err(format!("no harmonic free energy at {} K: soft modes that may be physical", point.temperature_k))
+        Err(format!(
+            "no harmonic free energy at {} K: soft modes that may be physical",
+            point.temperature_k
+        ))
     }
 }
 

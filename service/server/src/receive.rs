@@ -42,7 +42,11 @@ impl Receiver {
         principal: Principal,
         stream: Streaming<v1::SendArrayRequest>,
     ) -> Self {
-        Self { core, principal, stream }
+        Self {
+            core,
+            principal,
+            stream,
+        }
     }
 
     /// Takes frames until the finish frame.
@@ -80,13 +84,18 @@ impl Receiver {
         };
         let message = message.map_err(|_| Failure::Late {
             reason: reason::STREAM_IDLE,
-            message: format!("no frame for {} s; what has arrived is kept", idle.as_secs_f64()),
+            message: format!(
+                "no frame for {} s; what has arrived is kept",
+                idle.as_secs_f64()
+            ),
         })?;
         let message = message.map_err(stream_failure)?;
         let message = message.ok_or_else(|| {
             incomplete("the stream ended without a finish frame; what has arrived is kept")
         })?;
-        message.frame.ok_or_else(|| incomplete("a frame is empty").into())
+        message
+            .frame
+            .ok_or_else(|| incomplete("a frame is empty").into())
     }
 
     async fn open(&self, open: v1::SendArrayOpen) -> Result<Target, Failure> {
@@ -95,7 +104,10 @@ impl Receiver {
         let status = self.status(id, &open.array).await?;
         if open.offset_bytes == 0 && status.committed_bytes > 0 && !status.stored {
             let array = open.array.clone();
-            self.core.depot.ask(move |store| store.restart_array(id, &array)).await?;
+            self.core
+                .depot
+                .ask(move |store| store.restart_array(id, &array))
+                .await?;
         } else if open.offset_bytes != 0 && open.offset_bytes != status.committed_bytes {
             return Err(Failure::Forbidden {
                 reason: reason::OFFSET_MISMATCH,
@@ -124,7 +136,10 @@ impl Receiver {
                 let status = store.array_status(id, &array)?;
                 let view = store.get_submission(id)?;
                 if view.state != tarehouse_store::State::Draft && !status.stored {
-                    return Err(StoreError::NotADraft { id, state: view.state });
+                    return Err(StoreError::NotADraft {
+                        id,
+                        state: view.state,
+                    });
                 }
                 Ok(status)
             })
@@ -150,7 +165,10 @@ impl Receiver {
         finish: v1::SendArrayFinish,
     ) -> Result<v1::Array, Failure> {
         let digest: Digest = digest_from_hex(&finish.digest).ok_or_else(|| {
-            Failure::field("finish.digest", "64 lower-case hexadecimal digits are wanted")
+            Failure::field(
+                "finish.digest",
+                "64 lower-case hexadecimal digits are wanted",
+            )
         })?;
         let (received, declared) = (target.offset_bytes, target.size_bytes);
         if finish.size_bytes != declared || received != declared && !target.stored {
@@ -175,7 +193,11 @@ impl Receiver {
     /// Makes what has arrived durable, so that the next upload can go on from there.
     async fn keep(&self, target: &Target) {
         let (id, array) = (target.id, target.array.clone());
-        let kept = self.core.depot.ask(move |store| store.array_status(id, &array)).await;
+        let kept = self
+            .core
+            .depot
+            .ask(move |store| store.array_status(id, &array))
+            .await;
         match kept {
             Ok(status) => {
                 tracing::info!(%id, array = %target.array, committed = status.committed_bytes, "upload cut");
@@ -189,7 +211,10 @@ impl Receiver {
 fn check_chunk(target: &Target, chunk: &v1::Chunk) -> Result<u64, Failure> {
     let size = chunk.data.len();
     if size > limits::CHUNK_BYTES_MAX {
-        let message = format!("a chunk has {size} bytes, at most {} are taken", limits::CHUNK_BYTES_MAX);
+        let message = format!(
+            "a chunk has {size} bytes, at most {} are taken",
+            limits::CHUNK_BYTES_MAX
+        );
         return Err(Failure::invalid(reason::MESSAGE_TOO_LARGE, message));
     }
     if chunk.offset_bytes != target.offset_bytes {

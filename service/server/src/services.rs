@@ -26,9 +26,15 @@ pub(crate) const NAMES: [&str; 4] = [
 
 /// Adds all services.
 pub(crate) fn add(routes: &mut RoutesBuilder, core: &Arc<Core>) {
-    let submission = submission::Service { core: Arc::clone(core) };
-    let transfer = transfer::Service { core: Arc::clone(core) };
-    let catalog = catalog::Service { core: Arc::clone(core) };
+    let submission = submission::Service {
+        core: Arc::clone(core),
+    };
+    let transfer = transfer::Service {
+        core: Arc::clone(core),
+    };
+    let catalog = catalog::Service {
+        core: Arc::clone(core),
+    };
     routes
         .add_service(
             SubmissionServiceServer::new(submission).max_decoding_message_size(MESSAGE_BYTES_MAX),
@@ -37,7 +43,9 @@ pub(crate) fn add(routes: &mut RoutesBuilder, core: &Arc<Core>) {
             TransferServiceServer::new(transfer)
                 .max_decoding_message_size(UPLOAD_MESSAGE_BYTES_MAX),
         )
-        .add_service(CatalogServiceServer::new(catalog).max_decoding_message_size(MESSAGE_BYTES_MAX))
+        .add_service(
+            CatalogServiceServer::new(catalog).max_decoding_message_size(MESSAGE_BYTES_MAX),
+        )
         .add_service(
             ServerServiceServer::new(server::Service::new(core))
                 .max_decoding_message_size(MESSAGE_BYTES_MAX),

@@ -33,7 +33,11 @@ impl Uploads {
 
     /// A place among the streams.
     pub(crate) fn stream(&self) -> Result<OwnedSemaphorePermit, Failure> {
-        permit(&self.streams, reason::UPLOADS_FULL, "too many uploads are open")
+        permit(
+            &self.streams,
+            reason::UPLOADS_FULL,
+            "too many uploads are open",
+        )
     }
 
     /// Holds an array for one upload until the hold is dropped.
@@ -47,7 +51,10 @@ impl Uploads {
                 retry_after: Some(RETRY_AFTER),
             });
         }
-        Ok(Hold { key, held: Arc::clone(&self.held) })
+        Ok(Hold {
+            key,
+            held: Arc::clone(&self.held),
+        })
     }
 }
 
@@ -60,7 +67,10 @@ pub(crate) struct Hold {
 
 impl Drop for Hold {
     fn drop(&mut self) {
-        self.held.lock().unwrap_or_else(PoisonError::into_inner).remove(&self.key);
+        self.held
+            .lock()
+            .unwrap_or_else(PoisonError::into_inner)
+            .remove(&self.key);
     }
 }
 
@@ -73,7 +83,10 @@ mod tests {
         let uploads = Uploads::new(2);
         let id = SubmissionId::from_bytes([3; 16]);
         let hold = uploads.hold(id, "constants.npy").unwrap();
-        assert!(matches!(uploads.hold(id, "constants.npy"), Err(Failure::Conflict { .. })));
+        assert!(matches!(
+            uploads.hold(id, "constants.npy"),
+            Err(Failure::Conflict { .. })
+        ));
         assert!(uploads.hold(id, "effective_charges.npy").is_ok());
         drop(hold);
         assert!(uploads.hold(id, "constants.npy").is_ok());

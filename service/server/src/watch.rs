@@ -29,7 +29,12 @@ pub(crate) async fn start(
     let board = core.hub.watch(id);
     core.submission(id).await?;
     let (events, stream) = mpsc::channel(EVENTS_MAX);
-    let watcher = Watcher { core: Arc::clone(core), id, board, events };
+    let watcher = Watcher {
+        core: Arc::clone(core),
+        id,
+        board,
+        events,
+    };
     tokio::spawn(watcher.run(permit));
     Ok(ReceiverStream::new(stream))
 }

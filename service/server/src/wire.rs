@@ -100,8 +100,14 @@ pub(crate) fn submission(
         update_time: Some(timestamp(view.updated_ms)),
         arrays,
         verdict: verdict(view.verdict).into(),
-        verdict_reasons: report.map(|report| report.verdict_reasons.clone()).unwrap_or_default(),
-        record: if in_catalogue { names::record(view.id) } else { String::new() },
+        verdict_reasons: report
+            .map(|report| report.verdict_reasons.clone())
+            .unwrap_or_default(),
+        record: if in_catalogue {
+            names::record(view.id)
+        } else {
+            String::new()
+        },
         etag: etag(view),
     }
 }

@@ -10,7 +10,7 @@ use tarehouse_store::{Lease, Outcome, StoreError};
 use tokio::task::JoinSet;
 
 use crate::core::Core;
-use crate::failure::Failure;
+use crate::failure::{Failure, with_sources};
 use crate::hub::Reporter;
 use crate::judge::{self, Crash};
 
@@ -94,8 +94,13 @@ fn attempt_and_keep(core: &Core, lease: &Lease) -> bool {
     let kept = match attempt(core, lease) {
         Ok(outcome) => {
             let verdict = outcome.verdict;
-            let kept = core.depot.store().complete_examination(&core.actor(), lease, outcome);
-            kept.map(|done| tracing::info!(id = %lease.id(), ?verdict, state = %done.state, "examined"))
+            let kept = core
+                .depot
+                .store()
+                .complete_examination(&core.actor(), lease, outcome);
+            kept.map(
+                |done| tracing::info!(id = %lease.id(), ?verdict, state = %done.state, "examined"),
+            )
         }
         Err(crash) => note(core, lease, &crash),
     };
@@ -114,7 +119,13 @@ fn attempt(core: &Core, lease: &Lease) -> Result<Outcome, Crash> {
     tracing::info!(%id, attempt, "examination begins");
     let reporter = Reporter::new(Arc::clone(&core.hub), id, attempt);
     let examiner = core.examiner.as_ref();
-    judge::attempt(&core.depot.store(), id, examiner, &core.config.policy, &reporter)
+    judge::attempt(
+        &core.depot.store(),
+        id,
+        examiner,
+        &core.config.policy,
+        &reporter,
+    )
 }
 
 /// Notes a crashed attempt, with the report that a last one leaves behind.
@@ -131,14 +142,4 @@ fn note(core: &Core, lease: &Lease, crash: &Crash) -> Result<(), StoreError> {
         Err(StoreError::Forbidden { .. }) => Ok(()),
         noted => noted.map(drop),
     }
-}
-
-fn with_sources(error: &dyn std::error::Error) -> String {
-    let mut words = error.to_string();
-    let mut source = error.source();
-    while let Some(inner) = source {
-        words = format!("{words}: {inner}");
-        source = inner.source();
-    }
-    words
 }

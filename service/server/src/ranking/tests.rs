@@ -23,7 +23,11 @@ fn candidate(form: &str, lattice: f64, zero_point: f64, a: f64) -> Candidate {
         record: format!("records/{form}"),
         form: form.to_owned(),
         accepted_ms: 10,
-        level: LevelKey { energy: "e".into(), constants: "c".into(), cell_protocol: 1 },
+        level: LevelKey {
+            energy: "e".into(),
+            constants: "c".into(),
+            cell_protocol: 1,
+        },
         lattice_energy_kj_per_mol: lattice,
         zero_point_energy_kj_per_mol: zero_point,
         free_energy,
@@ -38,7 +42,10 @@ fn close(found: Option<f64>, expected: f64) {
 #[test]
 fn order_changes_where_the_free_energies_cross() {
     // I: −10 + 2 − 1e−5 T², II: −9 + 1.5 − 4e−5 T²; they cross at T² = 0.5/3e−5, T = 129.1 K.
-    let forms = vec![candidate("I", -10.0, 2.0, 1e-5), candidate("II", -9.0, 1.5, 4e-5)];
+    let forms = vec![
+        candidate("I", -10.0, 2.0, 1e-5),
+        candidate("II", -9.0, 1.5, 4e-5),
+    ];
     let tables = rank(forms, &[0.0, 50.0, 129.0, 130.0, 300.0]);
     assert_eq!(tables.len(), 1);
     let rows = &tables[0].rows;
@@ -73,7 +80,11 @@ fn undefined_forms_are_listed_last_with_a_reason_and_no_number() {
     assert_eq!([rows[0].form.as_str(), rows[1].form.as_str()], ["I", "0"]);
     for point in &rows[1].points {
         assert!(!point.defined && point.rank == 0 && point.relative_kj_per_mol.is_none());
-        assert!(point.exclusion_reason.contains("soft modes"), "{}", point.exclusion_reason);
+        assert!(
+            point.exclusion_reason.contains("soft modes"),
+            "{}",
+            point.exclusion_reason
+        );
     }
     close(rows[0].points[0].relative_kj_per_mol, 0.0);
 }
@@ -86,7 +97,11 @@ fn levels_never_meet_and_the_newest_record_speaks_for_its_form() {
     newer.record = "records/newer".to_owned();
     newer.accepted_ms = 11;
     for forms in [
-        vec![candidate("I", -10.0, 2.0, 1e-5), other.clone(), newer.clone()],
+        vec![
+            candidate("I", -10.0, 2.0, 1e-5),
+            other.clone(),
+            newer.clone(),
+        ],
         vec![newer, other, candidate("I", -10.0, 2.0, 1e-5)],
     ] {
         let tables = rank(forms, &[0.0]);

@@ -34,7 +34,10 @@ impl Service {
     /// All records of a filter, by compound, then form, then name. The store lists them in other orders.
     async fn gather(&self, filter: RecordFilter) -> Result<Vec<RecordView>, Failure> {
         let mut records = Vec::new();
-        let mut page = PageRequest { size: GATHER_PAGE, token: String::new() };
+        let mut page = PageRequest {
+            size: GATHER_PAGE,
+            token: String::new(),
+        };
         loop {
             let (filter, request) = (filter.clone(), page.clone());
             let found = self
@@ -52,7 +55,10 @@ impl Service {
         Ok(records)
     }
 
-    async fn list(&self, request: v1::ListRecordsRequest) -> Result<v1::ListRecordsResponse, Failure> {
+    async fn list(
+        &self,
+        request: v1::ListRecordsRequest,
+    ) -> Result<v1::ListRecordsResponse, Failure> {
         let compound = names::optional_text("compound", request.compound)?;
         let form = names::optional_text("form", request.form)?;
         let mark = format!("records {compound:?} {form:?} {}", request.include_retired);
@@ -90,7 +96,11 @@ impl Service {
             size: names::page_size(request.page_size),
             token: token::unwrap(mark, &request.page_token)?,
         };
-        let page = self.core.depot.ask(move |store| store.list_compounds(&page)).await?;
+        let page = self
+            .core
+            .depot
+            .ask(move |store| store.list_compounds(&page))
+            .await?;
         let count = |n: u64| u32::try_from(n).unwrap_or(u32::MAX);
         let compounds = page
             .entries
@@ -103,7 +113,10 @@ impl Service {
             })
             .collect();
         let next_page_token = token::wrap(mark, &page.next_token);
-        Ok(v1::ListCompoundsResponse { compounds, next_page_token })
+        Ok(v1::ListCompoundsResponse {
+            compounds,
+            next_page_token,
+        })
     }
 
     async fn rank(&self, request: v1::RankFormsRequest) -> Result<Vec<v1::RankTable>, Failure> {
@@ -114,7 +127,11 @@ impl Service {
         let grid = &self.core.config.policy.limits.temperature_grid_k;
         let temperatures = temperatures(request.temperatures_k, grid)?;
         let name = compound.clone();
-        let records = self.core.depot.ask(move |store| store.records_of_compound(&name)).await?;
+        let records = self
+            .core
+            .depot
+            .ask(move |store| store.records_of_compound(&name))
+            .await?;
         if records.is_empty() {
             return Err(Failure::NotFound {
                 reason: reason::COMPOUND_NOT_FOUND,
@@ -126,7 +143,9 @@ impl Service {
             let candidate = self.candidate(record).await?;
             let level = &candidate.level;
             let wanted = |filter: &Option<String>, level: &str| {
-                filter.as_ref().is_none_or(|filter| normalised(filter) == level)
+                filter
+                    .as_ref()
+                    .is_none_or(|filter| normalised(filter) == level)
             };
             if wanted(&request.energy_level, &level.energy)
                 && wanted(&request.constants_level, &level.constants)
@@ -161,7 +180,12 @@ impl Service {
 
 /// Sorts records, and marks where a page ended. Control characters stand in no name.
 fn place(record: &RecordView) -> String {
-    format!("{}\u{1}{}\u{1}{}", normalised(&record.compound), record.form, record.id)
+    format!(
+        "{}\u{1}{}\u{1}{}",
+        normalised(&record.compound),
+        record.form,
+        record.id
+    )
 }
 
 /// Lower case, single blanks.
@@ -189,7 +213,9 @@ fn temperatures(wanted: Vec<f64>, grid: &[f64]) -> Result<Vec<f64>, Failure> {
         .filter(|(_, temperature)| !(first..=last).contains(*temperature))
         .map(|(k, temperature)| Breach {
             field: format!("temperatures_k[{k}]"),
-            message: format!("{temperature} K is not within {first} K to {last} K; nothing is extrapolated"),
+            message: format!(
+                "{temperature} K is not within {first} K to {last} K; nothing is extrapolated"
+            ),
         })
         .collect();
     if breaches.is_empty() {
@@ -246,14 +272,27 @@ mod tests {
     fn temperatures_keep_to_the_grid() {
         let grid = [0.0, 300.0];
         assert_eq!(temperatures(vec![], &grid), Ok(vec![0.0, 300.0]));
-        assert_eq!(temperatures(vec![300.0, 0.0, 12.5], &grid), Ok(vec![300.0, 0.0, 12.5]));
+        assert_eq!(
+            temperatures(vec![300.0, 0.0, 12.5], &grid),
+            Ok(vec![300.0, 0.0, 12.5])
+        );
         let Err(Failure::Invalid { breaches, .. }) =
             temperatures(vec![-1.0, 5.0, 300.1, f64::NAN], &grid)
         else {
             panic!("must be refused");
         };
-        let fields: Vec<&str> = breaches.iter().map(|breach| breach.field.as_str()).collect();
-        assert_eq!(fields, ["temperatures_k[0]", "temperatures_k[2]", "temperatures_k[3]"]);
+        let fields: Vec<&str> = breaches
+            .iter()
+            .map(|breach| breach.field.as_str())
+            .collect();
+        assert_eq!(
+            fields,
+            [
+                "temperatures_k[0]",
+                "temperatures_k[2]",
+                "temperatures_k[3]"
+            ]
+        );
         let most = limits::TEMPERATURES_MAX;
         assert!(temperatures(vec![1.0; most], &grid).is_ok());
         assert!(temperatures(vec![1.0; most + 1], &grid).is_err());

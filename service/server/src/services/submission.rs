@@ -50,7 +50,10 @@ impl Service {
         }
         core.check_draft_quota(&principal, &new).await?;
         let actor = core.actor_of(&principal);
-        let receipt = core.depot.ask(move |store| store.create_submission(&actor, new)).await?;
+        let receipt = core
+            .depot
+            .ask(move |store| store.create_submission(&actor, new))
+            .await?;
         core.submission_message(receipt.id).await
     }
 
@@ -89,8 +92,11 @@ impl Service {
         if !request.etag.is_empty() && request.etag != wire::etag(&view) {
             return Err(etag_mismatch());
         }
+        tracing::info!(%id, principal = %principal.0, %reason, "withdrawal");
         let actor = core.actor_of(&principal);
-        core.depot.ask(move |store| store.withdraw(&actor, id, &reason)).await?;
+        core.depot
+            .ask(move |store| store.withdraw(&actor, id))
+            .await?;
         core.submission_message(id).await
     }
 
@@ -104,13 +110,20 @@ impl Service {
         let compound = names::optional_text("compound", request.compound)?;
         let key = names::optional_text("contributor_key", request.contributor_key)?;
         let mark = format!("submissions {state:?} {compound:?} {key:?}");
-        let filter = SubmissionFilter { state, contributor: None, compound };
+        let filter = SubmissionFilter {
+            state,
+            contributor: None,
+            compound,
+        };
         let size = names::page_size(request.page_size);
         let mut next = token::unwrap(&mark, &request.page_token)?;
         let mut submissions = Vec::new();
         for _ in 0..FILTERED_PAGES_MAX {
             let (filter, token) = (filter.clone(), std::mem::take(&mut next));
-            let page = PageRequest { size: size - submissions.len(), token };
+            let page = PageRequest {
+                size: size - submissions.len(),
+                token,
+            };
             let page = core
                 .depot
                 .ask(move |store| store.list_submissions(&filter, &page))
@@ -126,7 +139,10 @@ impl Service {
             }
         }
         let next_page_token = token::wrap(&mark, &next);
-        Ok(v1::ListSubmissionsResponse { submissions, next_page_token })
+        Ok(v1::ListSubmissionsResponse {
+            submissions,
+            next_page_token,
+        })
     }
 
     async fn report(&self, name: &str) -> Result<v1::Report, Failure> {
@@ -205,7 +221,10 @@ fn declared_arrays(
             let field = format!("arrays[{k}]{field}");
             breaches.push(Breach { field, message });
         };
-        let expected = summary.arrays.iter().find(|expected| expected.name == array.name);
+        let expected = summary
+            .arrays
+            .iter()
+            .find(|expected| expected.name == array.name);
         let digest = digest_from_hex(&array.digest);
         match expected {
             None => breach(".name", "the manifest names no such array".to_owned()),
@@ -222,9 +241,16 @@ fn declared_arrays(
             Some(_) => {}
         }
         if digest.is_none() {
-            breach(".digest", "64 lower-case hexadecimal digits are wanted".to_owned());
+            breach(
+                ".digest",
+                "64 lower-case hexadecimal digits are wanted".to_owned(),
+            );
         }
-        if declared.iter().take(k).any(|earlier| earlier.name == array.name) {
+        if declared
+            .iter()
+            .take(k)
+            .any(|earlier| earlier.name == array.name)
+        {
             breach(".name", "declared twice".to_owned());
         }
         arrays.extend(digest.map(|digest| DeclaredArray {
@@ -235,8 +261,14 @@ fn declared_arrays(
     }
     for expected in &summary.arrays {
         if !declared.iter().any(|array| array.name == expected.name) {
-            let message = format!("{} is named in the manifest but not declared", expected.name);
-            breaches.push(Breach { field: "arrays".to_owned(), message });
+            let message = format!(
+                "{} is named in the manifest but not declared",
+                expected.name
+            );
+            breaches.push(Breach {
+                field: "arrays".to_owned(),
+                message,
+            });
         }
     }
     if breaches.is_empty() {
