@@ -39,6 +39,8 @@ use crate::services;
 const KEEPALIVE_INTERVAL: Duration = Duration::from_secs(30);
 /// How long a ping may stay unanswered.
 const KEEPALIVE_TIMEOUT: Duration = Duration::from_secs(10);
+/// Calls open on one connection at the same time.
+const STREAMS_PER_CONNECTION_MAX: u32 = 256;
 /// What cut streams may take to end.
 const CUT_TIME: Duration = Duration::from_secs(1);
 /// Bytes on their way in one direction of a connection inside the process.
@@ -230,6 +232,7 @@ where
 {
     let secret = [AUTHORIZATION, COOKIE, HeaderName::from_static("x-api-key")];
     Server::builder()
+        .max_concurrent_streams(STREAMS_PER_CONNECTION_MAX)
         .http2_keepalive_interval(Some(KEEPALIVE_INTERVAL))
         .http2_keepalive_timeout(Some(KEEPALIVE_TIMEOUT))
         .layer(SetRequestIdLayer::x_request_id(MakeRequestUuid))

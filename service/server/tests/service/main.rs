@@ -1,6 +1,7 @@
 //! The service from outside: every call goes through the wire, over memory or over 127.0.0.1, with an examiner of the
 //! test's choice.
 
+mod binary;
 mod lists;
 mod refusals;
 mod running;
