@@ -26,7 +26,7 @@ const SERVICE: &str = "service";
 /// When to come back to a full queue or to too many streams.
 const RETRY_AFTER: Duration = Duration::from_secs(5);
 /// When to come back with too many drafts.
-const QUOTA_RETRY_AFTER: Duration = Duration::from_secs(60);
+const QUOTA_RETRY_AFTER: Duration = Duration::from_mins(1);
 
 /// Why the service could not be opened.
 #[derive(Debug, thiserror::Error)]
@@ -131,7 +131,7 @@ impl Core {
 
     /// Closes the store; what is acknowledged is durable with or without it.
     pub(crate) async fn close(&self) {
-        if let Err(failure) = self.depot.ask(|store| store.close()).await {
+        if let Err(failure) = self.depot.ask(Store::close).await {
             tracing::warn!(
                 ?failure,
                 "the store was not closed cleanly; its index is built anew"
