@@ -121,14 +121,25 @@ impl Metal {
         cubic_crystal(self.lattice(), self.a_angstrom, self.mass_u, &filled)
     }
 
+    /// A single output of the second program by its key; NaN where there is none.
+    pub fn computed_value(&self, key: &str) -> f64 {
+        let value = self.computed.rest.get(key);
+        value.and_then(toml::Value::as_float).unwrap_or(f64::NAN)
+    }
+
+    /// C₁₁, C₁₂, C₄₄ of the model in GPa, as the second program found them.
+    pub fn elastic_gpa(&self) -> Vec<f64> {
+        self.list("C11_C12_C44_GPa")
+    }
+
     fn tabulated(&self, point: &str) -> Vec<f64> {
-        let values = self.computed.rest.get(&format!("nu_THz_{point}"));
-        let values = values.and_then(toml::Value::as_array);
-        values
-            .into_iter()
-            .flatten()
-            .filter_map(toml::Value::as_float)
-            .collect()
+        self.list(&format!("nu_THz_{point}"))
+    }
+
+    fn list(&self, key: &str) -> Vec<f64> {
+        let values = self.computed.rest.get(key).and_then(toml::Value::as_array);
+        let values = values.into_iter().flatten();
+        values.filter_map(toml::Value::as_float).collect()
     }
 
     /// K of one shell, eV/Å²: the listed elements, and those that follow by K = Kᵀ and the

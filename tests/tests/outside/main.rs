@@ -10,6 +10,8 @@ mod debye;
 #[cfg(test)]
 mod gas_molecules;
 #[cfg(test)]
+mod large;
+#[cfg(test)]
 mod lattices;
 #[cfg(test)]
 mod limits;
@@ -21,6 +23,16 @@ mod oscillator;
 mod real_packages;
 #[cfg(test)]
 mod reference;
+#[cfg(test)]
+mod service;
+#[cfg(test)]
+mod service_closed_forms;
+#[cfg(test)]
+mod service_metals;
+#[cfg(test)]
+mod service_moments;
+#[cfg(test)]
+mod service_supercells;
 #[cfg(test)]
 mod units;
 #[cfg(test)]
