@@ -1,0 +1,60 @@
+//! scratch
+use std::time::Instant;
+use tarehouse_physics::{dynamics::*, images::*, projection::*, symmetry::*, *};
+fn main() {
+    let p = std::path::PathBuf::from(std::env::args().nth(1).unwrap());
+    let m = std::fs::read(p.join("package.toml")).unwrap();
+    let c = std::fs::read(p.join("constants.npy")).unwrap();
+    let t = Instant::now();
+    let s = tarehouse_proto::package::decode(&m, &[("constants.npy", &c)]).unwrap();
+    println!("decode {:?}", t.elapsed());
+    let t = Instant::now();
+    let g = SpaceGroup::find(&s.crystal, 1e-3).unwrap();
+    println!("group {:?}", t.elapsed());
+    let cr = g.symmetrised(&s.crystal);
+    let t = Instant::now();
+    let im = PairImages::find(&cr, s.constants.supercell(), 1e-3);
+    println!("images {:?}", t.elapsed());
+    let t = Instant::now();
+    let pc = projected(&s.constants, &g);
+    println!("projected {:?}", t.elapsed());
+    let d = Dynamics::with_inversion(&cr, &pc, &im, g.inversion().unwrap());
+    let raw = Dynamics::new(&cr, &s.constants, &im);
+    let q = nalgebra::Vector3::new(0.25, 0.25, 1.0 / 3.0);
+    let t = Instant::now();
+    let f = d.form(&q, Sharing::Nearest);
+    println!("form {:?}", t.elapsed());
+    let t = Instant::now();
+    let _ = d.form(&q, Sharing::InversePower);
+    println!("form inv first {:?}", t.elapsed());
+    let t = Instant::now();
+    let _ = d.form(&q, Sharing::InversePower);
+    println!("form inv {:?}", t.elapsed());
+    let t = Instant::now();
+    let _ = f.eigenvalues(792).unwrap();
+    println!("real eigenvalues {:?}", t.elapsed());
+    let t = Instant::now();
+    let mo = d.modes_of(&f).unwrap();
+    println!("real modes {:?}", t.elapsed());
+    let t = Instant::now();
+    let mx = raw.matrix(&q);
+    println!("raw matrix {:?}", t.elapsed());
+    let t = Instant::now();
+    let _ = MatrixForm::Complex(mx).eigenvalues(792).unwrap();
+    println!("complex eigenvalues {:?}", t.elapsed());
+    let mol = molecules::Molecules::find(&cr, 0.35);
+    let t = Instant::now();
+    for b in 0..792 {
+        let _ = mol.external_fraction(&cr, &q, mo.vector(b));
+    }
+    println!("external {:?}", t.elapsed());
+    let t = Instant::now();
+    let am = long_wave::AcousticMatrix::new(&d).unwrap();
+    println!("acoustic {:?}", t.elapsed());
+    let t = Instant::now();
+    let gc = gamma_point::GammaCorrection::new(&am, &cr, [4, 4, 3], 0.03);
+    println!("gamma {:?}", t.elapsed());
+    let t = Instant::now();
+    let _ = vibrations::gamma_term(&gc, 300.0);
+    println!("gamma term {:?}", t.elapsed());
+}
