@@ -63,16 +63,19 @@ impl Watcher {
     }
 
     async fn follow(&mut self) -> Result<(), Failure> {
-        let (mut told, mut stage) = (None, None);
+        let (mut seen, mut stage, mut told) = (None, None, None);
         loop {
             let news = *self.board.borrow_and_update();
-            if told != Some(news.changes) {
+            if seen != Some(news.changes) {
+                seen = Some(news.changes);
                 let submission = self.core.submission_message(self.id).await?;
                 let state = v1::State::try_from(submission.state).unwrap_or_default();
-                if !self.tell(Event::Submission(submission)).await || is_final(state) {
+                // News may come after what it tells of has been read.
+                let is_new = told.as_ref() != Some(&submission);
+                told = Some(submission.clone());
+                if is_new && !self.tell(Event::Submission(submission)).await || is_final(state) {
                     return Ok(());
                 }
-                told = Some(news.changes);
             }
             if news.stage != stage {
                 stage = news.stage;

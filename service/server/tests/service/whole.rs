@@ -1,5 +1,7 @@
 //! The whole path of a package, from its creation to the ranking.
 
+use std::sync::Arc;
+
 use prost::Message as _;
 use tarehouse_assay::report::Verdict;
 use tarehouse_proto::package::npy;
@@ -268,4 +270,22 @@ async fn a_newer_accepted_submission_with_the_same_key_retires_the_older() {
     let tables = rank(&house, vec![0.0]).await.unwrap();
     assert_eq!(tables[0].rows.len(), 1);
     assert_eq!(tables[0].rows[0].record, newer.record);
+}
+
+#[tokio::test]
+async fn the_examination_of_the_house_gives_a_verdict() {
+    let house = House::new(Arc::new(tarehouse_server::Assay)).await;
+    // Constants that grow from −7 to 29 eV/Å² in the order of the file: no crystal has such.
+    let done = house.submit(&Pack::new("velnaric acid", "I", -10.0)).await;
+    assert_eq!(done.state(), v1::State::Rejected);
+    let report = house.report(&done.name).await.unwrap();
+    assert_eq!(report.verdict(), v1::Verdict::Reject);
+    assert_eq!(report.package_digest, done.package_digest);
+    let sums = report
+        .findings
+        .iter()
+        .find(|f| f.rule == "translation-sum-displaced")
+        .unwrap();
+    assert_eq!(sums.severity(), v1::Severity::Fail);
+    assert_eq!(done.verdict_reasons, report.verdict_reasons);
 }
