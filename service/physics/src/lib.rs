@@ -4,9 +4,12 @@
 //! crate knows none.
 
 pub mod crystal;
+pub mod density_of_states;
 pub mod elements;
 pub mod force_constants;
+pub mod molecules;
 pub mod supercell;
+pub mod thermodynamics;
 pub mod units;
 
 pub use crystal::Crystal;
