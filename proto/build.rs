@@ -25,11 +25,13 @@ fn main() -> Result<(), Box<dyn std::error::Error>> {
     let description = compiler.file_descriptor_set();
     let out = PathBuf::from(std::env::var("OUT_DIR")?).join("tarehouse_v1_descriptor.bin");
     std::fs::write(out, description.encode_to_vec())?;
+    let mut config = tonic_prost_build::Config::new();
+    config.enable_type_names();
     tonic_prost_build::configure()
         .build_client(true)
         .build_server(true)
         .bytes(".tarehouse.v1.Chunk.data")
         .bytes(".tarehouse.v1.CreateSubmissionRequest.manifest")
-        .compile_fds(description)?;
+        .compile_fds_with_config(description, config)?;
     Ok(())
 }

@@ -1,0 +1,143 @@
+//! Names, digests and the enums that stand one to one.
+
+use std::collections::BTreeSet;
+use std::sync::{Mutex, PoisonError};
+
+use tarehouse_assay::report::{LikelyCause, Rule, Severity, Strength, Tag, Verdict};
+use tarehouse_assay::submission::{CellProtocol, Digest};
+
+use super::ConvertError;
+use crate::v1;
+
+/// Names of all rules, in the order of the contract.
+pub fn rule_names() -> Vec<String> {
+    Rule::ALL
+        .iter()
+        .map(|rule| rule.name().to_owned())
+        .collect()
+}
+
+/// Names of all likely causes as in the contract's enum, in its order.
+pub fn likely_cause_names() -> Vec<String> {
+    LikelyCause::ALL
+        .iter()
+        .map(|cause| v1::LikelyCause::from(*cause).as_str_name().to_owned())
+        .collect()
+}
+
+/// The rule of a name.
+pub fn rule_by_name(name: &str) -> Option<Rule> {
+    Rule::ALL.iter().copied().find(|rule| rule.name() == name)
+}
+
+/// A digest as 64 lower-case hexadecimal digits.
+pub fn digest_to_hex(digest: &Digest) -> String {
+    const DIGITS: [char; 16] = [
+        '0', '1', '2', '3', '4', '5', '6', '7', '8', '9', 'a', 'b', 'c', 'd', 'e', 'f',
+    ];
+    digest
+        .iter()
+        .flat_map(|byte| {
+            [
+                DIGITS[usize::from(byte >> 4)],
+                DIGITS[usize::from(byte & 15)],
+            ]
+        })
+        .collect()
+}
+
+/// The digest of 64 lower-case hexadecimal digits.
+pub fn digest_from_hex(text: &str) -> Option<Digest> {
+    let (pairs, rest) = text.as_bytes().as_chunks::<2>();
+    let pairs: &[[u8; 2]; 32] = pairs.try_into().ok().filter(|_| rest.is_empty())?;
+    let nibble = |digit: u8| match digit {
+        b'0'..=b'9' => Some(digit - b'0'),
+        b'a'..=b'f' => Some(digit - b'a' + 10),
+        _ => None,
+    };
+    let mut digest = [0; 32];
+    for (byte, [high, low]) in digest.iter_mut().zip(pairs) {
+        *byte = nibble(*high)? << 4 | nibble(*low)?;
+    }
+    Some(digest)
+}
+
+/// Most distinct words that are kept, and the longest of them, bytes.
+const WORDS_MAX: usize = 256;
+const WORD_BYTES_MAX: usize = 64;
+
+/// The domain's words for units and families are part of the program; read back from a message they are found here or,
+/// where a later program wrote them, kept for the life of the process. The bound makes that harmless.
+pub(super) fn vocabulary(word: &str, field: &'static str) -> Result<&'static str, ConvertError> {
+    static WORDS: Mutex<BTreeSet<&'static str>> = Mutex::new(BTreeSet::new());
+    if word.is_empty() {
+        return Ok("");
+    }
+    let mut words = WORDS.lock().unwrap_or_else(PoisonError::into_inner);
+    if let Some(known) = words.get(word) {
+        return Ok(known);
+    }
+    if words.len() >= WORDS_MAX || word.len() > WORD_BYTES_MAX {
+        return Err(ConvertError::Vocabulary(field));
+    }
+    let kept: &'static str = Box::leak(word.to_owned().into_boxed_str());
+    words.insert(kept);
+    Ok(kept)
+}
+
+/// Enums of the domain and of the wire that stand one to one. The wire's `Unspecified` has no partner.
+macro_rules! paired {
+    ($domain:ty, $wire:ty { $($here:ident => $there:ident,)+ }) => {
+        impl From<$domain> for $wire {
+            fn from(value: $domain) -> Self {
+                match value { $(<$domain>::$here => <$wire>::$there,)+ }
+            }
+        }
+
+        impl TryFrom<$wire> for $domain {
+            type Error = ConvertError;
+
+            fn try_from(value: $wire) -> Result<Self, ConvertError> {
+                match value {
+                    $(<$wire>::$there => Ok(<$domain>::$here),)+
+                    <$wire>::Unspecified => Err(ConvertError::UnknownEnum {
+                        field: stringify!($domain),
+                        value: value as i32,
+                    }),
+                }
+            }
+        }
+    };
+}
+
+paired! { Verdict, v1::Verdict { Accept => Accept, Hold => Hold, Reject => Reject, } }
+paired! { Severity, v1::Severity { Pass => Pass, Caution => Caution, Fail => Fail, } }
+paired! { Tag, v1::SoftModeTag { Numerical => Numerical, PossiblyPhysical => PossiblyPhysical, } }
+paired! { Strength, v1::Strength { Strong => Strong, Weak => Weak, } }
+paired! { CellProtocol, v1::CellProtocol {
+    Relaxed => Relaxed, Experimental => Experimental, Expanded => Expanded, Other => Other,
+} }
+paired! { LikelyCause, v1::LikelyCause {
+    None => None,
+    WrongUnit => WrongUnit,
+    SwappedIndexOrder => SwappedIndexOrder,
+    PermutedAxes => PermutedAxes,
+    PermutedAtoms => PermutedAtoms,
+    WrongMasses => WrongMasses,
+    SignError => SignError,
+    ZeroedBlock => ZeroedBlock,
+    DuplicatedBlock => DuplicatedBlock,
+    WrongSupercell => WrongSupercell,
+    WrongStructure => WrongStructure,
+    ScfNoise => ScfNoise,
+    RoundedForces => RoundedForces,
+    DifferenceTruncation => DifferenceTruncation,
+    SmallSupercell => SmallSupercell,
+    UnrelaxedGeometry => UnrelaxedGeometry,
+    EvidenceErased => EvidenceErased,
+    MissingSetting => MissingSetting,
+    LooseSetting => LooseSetting,
+    Instability => Instability,
+    DifferentTreatment => DifferentTreatment,
+    Unknown => Unknown,
+} }
