@@ -1,5 +1,14 @@
 //! Judgement: checks, soft-mode tags, free-energy bracket and verdict. No input or output, no async.
 
+mod effective;
+mod noise;
+mod workup;
+mod checks;
+mod curves;
+mod facts;
+mod verdict;
+mod soft_modes;
+mod free_energy;
 pub mod policy;
 pub mod report;
 pub mod submission;
@@ -7,6 +16,9 @@ pub mod submission;
 pub use policy::Policy;
 pub use report::Report;
 pub use submission::Submission;
+pub use workup::projected_constants;
+
+use workup::Workup;
 
 use std::fmt;
 
@@ -51,15 +63,51 @@ impl std::error::Error for ExamineError {}
 
 /// Examines a submission under a policy: the one entrance of this crate.
 ///
+/// The report is a pure function of the package, the policy and the program version.
+///
 /// # Errors
 /// Only where nothing could be computed.
 pub fn examine(
-    _submission: &Submission,
-    _policy: &Policy,
-    _progress: &dyn Progress,
+    submission: &Submission,
+    policy: &Policy,
+    progress: &dyn Progress,
 ) -> Result<Report, ExamineError> {
-    Err(ExamineError::Eigenproblem {
-        during: "examination",
-        detail: "not built yet".to_owned(),
-    })
+    progress.advance("structure and constants", 0, 1);
+    let workup = Workup::new(submission, &policy.limits)?;
+    progress.advance("structure and constants", 1, 1);
+    let spectra = workup::spectra(&workup, &workup.draw_dynamics(), progress)?;
+    progress.advance("judgement", 0, 1);
+    let soft_modes = soft_modes::soft_modes(&workup, &spectra)?;
+    let defined = soft_modes.iter().all(|mode| mode.tag == report::Tag::Numerical);
+    let free_energy = free_energy::free_energies(&workup, &spectra, defined);
+    let facts = facts::facts(&workup, &spectra, &free_energy);
+    let width = verdict::judged_half_width(&workup, &free_energy);
+    let mut findings = checks::structure::check(&workup);
+    findings.extend(checks::blunders::check(&workup));
+    findings.extend(checks::sums::check(&workup));
+    findings.extend(checks::acoustic::check(&workup, &facts));
+    findings.extend(checks::reach::check(&workup, &soft_modes::truncated_dynamics(&workup))?);
+    findings.extend(checks::settings::check(&workup));
+    findings.extend(checks::claims::check(&workup, &free_energy));
+    findings.push(checks::long_range::check(&workup));
+    findings.push(verdict::soft_mode_finding(&soft_modes));
+    findings.push(verdict::bracket_finding(&workup, width));
+    let (verdict, verdict_reasons) = verdict::decide(&workup, &findings, &soft_modes, width);
+    let report = Report {
+        program_version: PROGRAM_VERSION.to_owned(),
+        policy_digest: policy.digest,
+        package_digest: submission.package_digest,
+        verdict,
+        verdict_reasons,
+        findings,
+        noise: workup.noise.summary.clone(),
+        soft_modes,
+        mesh: facts::mesh(&workup),
+        crystal: facts,
+        zero_point_energy_kj_per_mol: free_energy.first().map_or(0.0, |f| f.central_kj_per_mol),
+        free_energy,
+        curves: curves::curves(&workup, &spectra),
+    };
+    progress.advance("judgement", 1, 1);
+    Ok(report)
 }

@@ -204,6 +204,20 @@ impl ForceConstants {
         &self.blocks
     }
 
+    /// Constants of the same shape with each block replaced; `f` sees the flat index [l][i][j] and the block.
+    ///
+    /// The caller sees to it that the new values are finite.
+    #[must_use]
+    pub fn map_blocks(&self, mut f: impl FnMut(usize, &Matrix3<f64>) -> Matrix3<f64>) -> Self {
+        let blocks = self
+            .blocks
+            .iter()
+            .enumerate()
+            .map(|(flat, block)| f(flat, block))
+            .collect();
+        self.with_blocks(blocks)
+    }
+
     /// Constants of the same crystal and supercell with other values. Values must be finite.
     pub(crate) fn with_blocks(&self, blocks: Vec<Matrix3<f64>>) -> Self {
         debug_assert_eq!(blocks.len(), self.blocks.len());

@@ -5,14 +5,23 @@
 
 pub mod crystal;
 pub mod density_of_states;
+pub mod dynamics;
 pub mod elements;
 pub mod force_constants;
-pub mod molecules;
+pub mod gamma_point;
+pub mod images;
+pub mod long_wave;
+pub mod projection;
+pub mod qmesh;
 pub mod supercell;
+pub mod symmetry;
 pub mod thermodynamics;
 pub mod units;
+pub mod vibrations;
+pub mod molecules;
 
 pub use crystal::Crystal;
 pub use elements::Element;
 pub use force_constants::ForceConstants;
 pub use supercell::Supercell;
+pub use tarehouse_eigensolver::{EigenError, c64};

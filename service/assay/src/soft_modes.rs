@@ -1,0 +1,269 @@
+//! Clusters of soft modes on the mesh, each tagged as numerical or possibly physical, with the evidence.
+//!
+//! Points join where any of their symmetric copies are neighbours on the full mesh (26 neighbours, periodic). Rigid
+//! translations at Γ are left out. A tag is evidence, not proof.
+
+use tarehouse_physics::dynamics::Dynamics;
+use tarehouse_physics::molecules::acoustic_overlap;
+use tarehouse_physics::qmesh::QMesh;
+use tarehouse_physics::units::wavenumber_per_cm;
+
+use crate::ExamineError;
+use crate::noise::map_blocks;
+use crate::report::{SoftMode, Strength, Tag, TruncationChange};
+use crate::workup::{PointSpectrum, SoftBranch, Workup, eigen_error, lowest_wavenumber, show_q};
+
+/// Points of one cluster, as places in the reduced mesh.
+type Cluster = Vec<usize>;
+
+/// A mode is beyond its noise at this many standard deviations.
+const SIGNIFICANT_Z: f64 = 3.0;
+/// The same where values are rounded: their errors add coherently.
+const SIGNIFICANT_Z_ROUNDED: f64 = 5.0;
+
+/// All clusters, most negative first; clusters of the raw constants that vanish on projection last.
+pub(crate) fn soft_modes(
+    workup: &Workup<'_>,
+    spectra: &[PointSpectrum],
+) -> Result<Vec<SoftMode>, ExamineError> {
+    let neighbours = neighbours(&workup.mesh);
+    let is_soft = |point: usize| !spectra[point].soft.is_empty();
+    let mut modes = Vec::new();
+    let truncated = truncated_dynamics(workup);
+    for cluster in clusters(&neighbours, spectra.len(), is_soft) {
+        modes.push(tagged(workup, spectra, &truncated, &cluster)?);
+    }
+    modes.sort_by(|a, b| a.lowest_wavenumber_per_cm.total_cmp(&b.lowest_wavenumber_per_cm));
+    let below = workup.soft_below();
+    let raw_is_soft = |point: usize| spectra[point].raw.first().is_some_and(|x| *x < below);
+    for cluster in clusters(&neighbours, spectra.len(), raw_is_soft) {
+        if !cluster.iter().any(|point| is_soft(*point)) {
+            modes.push(vanished(workup, spectra, &cluster)?);
+        }
+    }
+    Ok(modes)
+}
+
+fn tagged(
+    workup: &Workup<'_>,
+    spectra: &[PointSpectrum],
+    truncated: &[(f64, Dynamics)],
+    cluster: &Cluster,
+) -> Result<SoftMode, ExamineError> {
+    let value = |point: usize, branch: &SoftBranch| spectra[point].eigenvalues[branch.branch];
+    let all = || cluster.iter().flat_map(|p| spectra[*p].soft.iter().map(move |b| (*p, b)));
+    let lowest = all().min_by(|a, b| value(a.0, a.1).total_cmp(&value(b.0, b.1)));
+    let Some((point, branch)) = lowest else {
+        return vanished(workup, spectra, cluster);
+    };
+    let z = |point: usize, b: &SoftBranch| (value(point, b) - b.null_mean.min(0.0)) / b.spread;
+    let significant =
+        if workup.noise.summary.rounded { SIGNIFICANT_Z_ROUNDED } else { SIGNIFICANT_Z };
+    let commensurate_point = |p: usize| workup.mesh.points()[p].commensurate;
+    let sampled = all()
+        .filter(|(p, _)| commensurate_point(*p))
+        .min_by(|a, b| z(a.0, a.1).total_cmp(&z(b.0, b.1)));
+    let beyond_noise = all().any(|(p, b)| z(p, b) < -significant);
+    let beyond_alias = all().any(|(p, b)| {
+        value(p, b) - b.null_mean.min(0.0) < -(significant * b.spread + b.alias)
+    });
+    let (tag, strength, reason) = match sampled {
+        Some((p, b)) if z(p, b) < -significant => (
+            Tag::PossiblyPhysical,
+            Strength::Strong,
+            format!(
+                "{} fits the supercell, so that nothing is interpolated there, and the mode lies {:.1} standard \
+                 deviations below zero",
+                show_q(&workup.mesh.points()[p].q),
+                -z(p, b)
+            ),
+        ),
+        _ if beyond_noise && workup.is_narrow() => (
+            Tag::Numerical,
+            Strength::Weak,
+            "only between sampled wave vectors, and the supercell is one molecule wide: a larger supercell decides"
+                .to_owned(),
+        ),
+        _ if beyond_alias => (
+            Tag::PossiblyPhysical,
+            Strength::Weak,
+            "between sampled wave vectors, but deeper than noise and aliasing explain: a larger supercell decides"
+                .to_owned(),
+        ),
+        _ if beyond_noise => (
+            Tag::Numerical,
+            Strength::Weak,
+            "between sampled wave vectors and within the scale of aliasing: a larger supercell decides".to_owned(),
+        ),
+        _ => (
+            Tag::Numerical,
+            Strength::Strong,
+            format!(
+                "within the noise of the upload; an instability weaker than {:.0}i cm⁻¹ cannot be excluded",
+                wavenumber_per_cm(significant * branch.spread)
+            ),
+        ),
+    };
+    let q = workup.mesh.points()[point].q;
+    let eigenvalue = value(point, branch);
+    let separation = (eigenvalue - branch.null_mean.min(0.0)).abs().max(f64::MIN_POSITIVE);
+    Ok(SoftMode {
+        tag,
+        strength,
+        lowest_wavenumber_per_cm: wavenumber_per_cm(eigenvalue),
+        raw_wavenumber_per_cm: lowest_wavenumber(&spectra[point].raw),
+        q: q.into(),
+        point_count: point_count(&workup.mesh, cluster),
+        commensurate: cluster.iter().any(|p| commensurate_point(*p) && !spectra[*p].soft.is_empty()),
+        z: Some(z(point, branch)),
+        alias_share: Some(branch.alias / separation),
+        external_fraction: spectra[point].external[branch.branch],
+        acoustic_overlap: acoustic_overlap(workup.crystal.masses_u(), &branch.vector),
+        participation: participation(&branch.vector),
+        truncation_changes: truncation_changes(truncated, &q, branch.branch)?,
+        exclusion_limit_per_cm: Some(wavenumber_per_cm(significant * branch.spread)),
+        reason,
+    })
+}
+
+/// A cluster of the raw constants that projection removed.
+fn vanished(
+    workup: &Workup<'_>,
+    spectra: &[PointSpectrum],
+    cluster: &Cluster,
+) -> Result<SoftMode, ExamineError> {
+    let raw = |p: usize| spectra[p].raw.first().copied().unwrap_or(f64::INFINITY);
+    let point = cluster.iter().copied().min_by(|a, b| raw(*a).total_cmp(&raw(*b))).unwrap_or(0);
+    let q = workup.mesh.points()[point].q;
+    let modes = workup.raw_dynamics.modes(&q).map_err(eigen_error("raw soft modes"))?;
+    let vector = modes.vector(0);
+    Ok(SoftMode {
+        tag: Tag::Numerical,
+        strength: Strength::Strong,
+        lowest_wavenumber_per_cm: lowest_wavenumber(&spectra[point].eigenvalues),
+        raw_wavenumber_per_cm: wavenumber_per_cm(raw(point)),
+        q: q.into(),
+        point_count: point_count(&workup.mesh, cluster),
+        commensurate: cluster.iter().any(|p| workup.mesh.points()[*p].commensurate),
+        z: None,
+        alias_share: None,
+        external_fraction: workup.molecules.external_fraction(&workup.crystal, &q, vector),
+        acoustic_overlap: acoustic_overlap(workup.crystal.masses_u(), vector),
+        participation: participation(vector),
+        truncation_changes: Vec::new(),
+        exclusion_limit_per_cm: None,
+        reason: "soft in the raw constants only: it vanishes when the sum rules and the space group are enforced"
+            .to_owned(),
+    })
+}
+
+/// Participation number Σ|e_i|²)² / Σ|e_i|⁴ over the number of atoms: 1 where all atoms move alike.
+fn participation(vector: &[tarehouse_physics::c64]) -> f64 {
+    let shares: Vec<f64> =
+        vector.chunks(3).map(|e| e.iter().map(|z| z.norm_sqr()).sum()).collect();
+    let sum: f64 = shares.iter().sum();
+    let squares: f64 = shares.iter().map(|x| x * x).sum();
+    sum * sum / (squares * shares.len() as f64)
+}
+
+fn point_count(mesh: &QMesh, cluster: &Cluster) -> u32 {
+    cluster.iter().map(|p| mesh.points()[*p].multiplicity.max(1)).sum()
+}
+
+/// The constants with those below each of the policy's fractions of the largest dropped, sums restored.
+pub(crate) fn truncated_dynamics(workup: &Workup<'_>) -> Vec<(f64, Dynamics)> {
+    let largest = workup.projected.blocks().iter().map(nalgebra::Matrix3::amax).fold(0.0, f64::max);
+    let truncate = |fraction: f64| {
+        let least = fraction * largest;
+        let kept = map_blocks(&workup.projected, |_, block| {
+            block.map(|x| if x.abs() < least { 0.0 } else { x })
+        });
+        let restored = tarehouse_physics::projection::projected(&kept, &workup.group);
+        workup.dynamics_of(&restored)
+    };
+    workup.limits.reach.truncation_fractions.iter().map(|f| (*f, truncate(*f))).collect()
+}
+
+fn truncation_changes(
+    truncated: &[(f64, Dynamics)],
+    q: &nalgebra::Vector3<f64>,
+    branch: usize,
+) -> Result<Vec<TruncationChange>, ExamineError> {
+    truncated
+        .iter()
+        .map(|(fraction, dynamics)| {
+            let values = dynamics.eigenvalues(q).map_err(eigen_error("truncated constants"))?;
+            let value = values.get(branch).copied().unwrap_or_default();
+            Ok(TruncationChange {
+                fraction: *fraction,
+                wavenumber_per_cm: wavenumber_per_cm(value),
+            })
+        })
+        .collect()
+}
+
+/// For each inequivalent point the points that some copy of it touches on the full mesh.
+fn neighbours(mesh: &QMesh) -> Vec<Vec<usize>> {
+    let mut lists = vec![Vec::new(); mesh.points().len()];
+    let n = mesh.divisions().map(i64::from);
+    let place = |m: [i64; 3]| {
+        let [x, y, z] = std::array::from_fn(|axis| m[axis].rem_euclid(n[axis]));
+        usize::try_from((x * n[1] + y) * n[2] + z).unwrap_or_default()
+    };
+    let mut join = |a: usize, b: usize| {
+        if a != b && !lists[a].contains(&b) {
+            lists[a].push(b);
+            lists[b].push(a);
+        }
+    };
+    let steps: Vec<[i64; 3]> = (0..27_i64).map(|k| [k / 9 - 1, k / 3 % 3 - 1, k % 3 - 1]).collect();
+    for full in 0..mesh.point_count() {
+        let m = mesh.triple(full);
+        for step in &steps {
+            let other = place(std::array::from_fn(|axis| m[axis] + step[axis]));
+            join(mesh.representative(full), mesh.representative(other));
+        }
+    }
+    // Commensurate points beside the mesh touch the corners of the mesh cell they lie in.
+    for (point, known) in mesh.points().iter().enumerate().filter(|(_, p)| p.multiplicity == 0) {
+        for corner in 0..8_i64 {
+            let m = std::array::from_fn(|axis| {
+                let scaled = (known.q[axis] * n[axis] as f64).floor();
+                #[allow(clippy::cast_possible_truncation, reason = "a mesh index is small")]
+                let floor = scaled as i64;
+                floor + (corner >> axis & 1)
+            });
+            join(point, mesh.representative(place(m)));
+        }
+    }
+    lists
+}
+
+fn clusters(
+    neighbours: &[Vec<usize>],
+    count: usize,
+    is_soft: impl Fn(usize) -> bool,
+) -> Vec<Cluster> {
+    let mut seen = vec![false; count];
+    let mut found = Vec::new();
+    for start in 0..count {
+        if seen[start] || !is_soft(start) {
+            continue;
+        }
+        seen[start] = true;
+        let mut cluster = vec![start];
+        let mut next = 0;
+        while next < cluster.len() {
+            for &other in &neighbours[cluster[next]] {
+                if !seen[other] && is_soft(other) {
+                    seen[other] = true;
+                    cluster.push(other);
+                }
+            }
+            next += 1;
+        }
+        cluster.sort_unstable();
+        found.push(cluster);
+    }
+    found
+}

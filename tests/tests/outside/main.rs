@@ -1,0 +1,25 @@
+//! Checks against the outside: constants of nature, tables of other people, closed forms of textbooks, measurements.
+//!
+//! Every value compared with stands in a file of `tests/reference/` whose head names its source, or beside its source
+//! in the test. Where a file carries a mark, only verified rows are asserted tightly.
+
+#[cfg(test)]
+mod debye;
+#[cfg(test)]
+mod gas_molecules;
+#[cfg(test)]
+mod lattices;
+#[cfg(test)]
+mod limits;
+#[cfg(test)]
+mod metals;
+#[cfg(test)]
+mod oscillator;
+#[cfg(test)]
+mod real_packages;
+#[cfg(test)]
+mod reference;
+#[cfg(test)]
+mod units;
+#[cfg(test)]
+mod weights;
