@@ -1,0 +1,384 @@
+//! Encoded form of events. Tags are only ever appended; a changed meaning gets a new version.
+
+use prost::Message;
+use tarehouse_assay::report::Verdict;
+
+use super::{ArrayStored, Crashed, Created, Event, EventError, Examined};
+use crate::id::SubmissionId;
+use crate::state::State;
+use crate::view::{DeclaredArray, ObjectRef, RecordSummary};
+
+const CREATED: u32 = 1;
+const ARRAY_STORED: u32 = 2;
+const SEALED: u32 = 3;
+const CRASHED: u32 = 4;
+const EXAMINED: u32 = 5;
+const WITHDRAWN: u32 = 6;
+const RETIRED: u32 = 7;
+const VERSION: u32 = 1;
+
+#[derive(Clone, PartialEq, Eq, Message)]
+pub(crate) struct ObjectWire {
+    #[prost(bytes = "vec", tag = "1")]
+    pub(crate) digest: Vec<u8>,
+    #[prost(uint64, tag = "2")]
+    pub(crate) size: u64,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
+struct ArrayWire {
+    #[prost(string, tag = "1")]
+    name: String,
+    #[prost(message, required, tag = "2")]
+    object: ObjectWire,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
+struct CreatedWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+    #[prost(string, tag = "2")]
+    request_id: String,
+    #[prost(bytes = "vec", tag = "3")]
+    package_digest: Vec<u8>,
+    #[prost(message, required, tag = "4")]
+    manifest: ObjectWire,
+    #[prost(message, repeated, tag = "5")]
+    arrays: Vec<ArrayWire>,
+    #[prost(string, tag = "6")]
+    compound: String,
+    #[prost(string, tag = "7")]
+    form: String,
+    #[prost(string, tag = "8")]
+    formula: String,
+    #[prost(string, optional, tag = "9")]
+    contributor_key: Option<String>,
+    #[prost(string, tag = "10")]
+    contributor: String,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
+struct ArrayStoredWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+    #[prost(message, required, tag = "2")]
+    array: ArrayWire,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
+struct IdWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
+struct CrashedWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+    #[prost(uint32, tag = "2")]
+    attempt: u32,
+    #[prost(string, tag = "3")]
+    detail: String,
+    #[prost(uint32, tag = "4")]
+    state: u32,
+    #[prost(message, optional, tag = "5")]
+    report: Option<ObjectWire>,
+}
+
+#[derive(Clone, PartialEq, Message)]
+struct ExaminedWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+    #[prost(message, required, tag = "2")]
+    report: ObjectWire,
+    #[prost(message, optional, tag = "3")]
+    projected: Option<ObjectWire>,
+    #[prost(uint32, tag = "4")]
+    verdict: u32,
+    #[prost(uint32, tag = "5")]
+    state: u32,
+    #[prost(message, optional, tag = "6")]
+    summary: Option<SummaryWire>,
+    #[prost(bytes = "vec", optional, tag = "7")]
+    supersedes: Option<Vec<u8>>,
+    #[prost(bytes = "vec", optional, tag = "8")]
+    superseded_by: Option<Vec<u8>>,
+}
+
+/// Encoded [`RecordSummary`].
+#[derive(Clone, PartialEq, Message)]
+pub(crate) struct SummaryWire {
+    #[prost(string, tag = "1")]
+    level: String,
+    #[prost(string, tag = "2")]
+    energy_level: String,
+    #[prost(double, tag = "3")]
+    lattice_energy_kj_per_mol: f64,
+    #[prost(double, tag = "4")]
+    zero_point_energy_kj_per_mol: f64,
+    #[prost(bool, tag = "5")]
+    defined: bool,
+    #[prost(double, repeated, tag = "6")]
+    temperature_k: Vec<f64>,
+    #[prost(double, repeated, tag = "7")]
+    central_kj_per_mol: Vec<f64>,
+    #[prost(double, repeated, tag = "8")]
+    lower_kj_per_mol: Vec<f64>,
+    #[prost(double, repeated, tag = "9")]
+    upper_kj_per_mol: Vec<f64>,
+    #[prost(double, repeated, tag = "10")]
+    entropy_j_per_mol_k: Vec<f64>,
+    #[prost(double, optional, tag = "11")]
+    density_g_per_cm3: Option<f64>,
+    #[prost(uint32, optional, tag = "12")]
+    space_group_number: Option<u32>,
+}
+
+impl From<&RecordSummary> for SummaryWire {
+    fn from(summary: &RecordSummary) -> Self {
+        let summary = summary.clone();
+        Self {
+            level: summary.level,
+            energy_level: summary.energy_level,
+            lattice_energy_kj_per_mol: summary.lattice_energy_kj_per_mol,
+            zero_point_energy_kj_per_mol: summary.zero_point_energy_kj_per_mol,
+            defined: summary.defined,
+            temperature_k: summary.temperature_k,
+            central_kj_per_mol: summary.central_kj_per_mol,
+            lower_kj_per_mol: summary.lower_kj_per_mol,
+            upper_kj_per_mol: summary.upper_kj_per_mol,
+            entropy_j_per_mol_k: summary.entropy_j_per_mol_k,
+            density_g_per_cm3: summary.density_g_per_cm3,
+            space_group_number: summary.space_group_number,
+        }
+    }
+}
+
+impl From<SummaryWire> for RecordSummary {
+    fn from(wire: SummaryWire) -> Self {
+        Self {
+            level: wire.level,
+            energy_level: wire.energy_level,
+            lattice_energy_kj_per_mol: wire.lattice_energy_kj_per_mol,
+            zero_point_energy_kj_per_mol: wire.zero_point_energy_kj_per_mol,
+            defined: wire.defined,
+            temperature_k: wire.temperature_k,
+            central_kj_per_mol: wire.central_kj_per_mol,
+            lower_kj_per_mol: wire.lower_kj_per_mol,
+            upper_kj_per_mol: wire.upper_kj_per_mol,
+            entropy_j_per_mol_k: wire.entropy_j_per_mol_k,
+            density_g_per_cm3: wire.density_g_per_cm3,
+            space_group_number: wire.space_group_number,
+        }
+    }
+}
+
+impl From<ObjectRef> for ObjectWire {
+    fn from(object: ObjectRef) -> Self {
+        Self {
+            digest: object.digest.to_vec(),
+            size: object.size,
+        }
+    }
+}
+
+impl TryFrom<ObjectWire> for ObjectRef {
+    type Error = &'static str;
+
+    fn try_from(wire: ObjectWire) -> Result<Self, Self::Error> {
+        Ok(Self {
+            digest: wire
+                .digest
+                .try_into()
+                .map_err(|_| "a digest has 32 bytes")?,
+            size: wire.size,
+        })
+    }
+}
+
+/// Number stored for a verdict; only ever appended to.
+pub(crate) fn verdict_code(verdict: Verdict) -> u32 {
+    match verdict {
+        Verdict::Accept => 1,
+        Verdict::Hold => 2,
+        Verdict::Reject => 3,
+    }
+}
+
+/// Verdict of a stored number.
+pub(crate) fn verdict_of(code: u32) -> Option<Verdict> {
+    [Verdict::Accept, Verdict::Hold, Verdict::Reject]
+        .into_iter()
+        .find(|verdict| verdict_code(*verdict) == code)
+}
+
+/// Id from stored bytes.
+pub(crate) fn id_of(bytes: Vec<u8>) -> Result<SubmissionId, &'static str> {
+    let bytes = bytes.try_into().map_err(|_| "an id has 16 bytes")?;
+    Ok(SubmissionId::from_bytes(bytes))
+}
+
+/// Stored bytes of an id.
+pub(crate) fn id_wire(id: SubmissionId) -> Vec<u8> {
+    id.as_bytes().to_vec()
+}
+
+fn state_of(code: u32) -> Result<State, &'static str> {
+    State::from_code(code).ok_or("a state is not known")
+}
+
+impl Event {
+    /// Kind, version and payload.
+    pub(crate) fn encode(&self) -> (u32, u32, Vec<u8>) {
+        let (kind, payload) = match self {
+            Self::Created(event) => (CREATED, created_wire(event).encode_to_vec()),
+            Self::ArrayStored(event) => {
+                let wire = ArrayStoredWire {
+                    id: id_wire(event.id),
+                    array: ArrayWire {
+                        name: event.name.clone(),
+                        object: event.object.into(),
+                    },
+                };
+                (ARRAY_STORED, wire.encode_to_vec())
+            }
+            Self::Sealed(id) => (SEALED, IdWire { id: id_wire(*id) }.encode_to_vec()),
+            Self::Crashed(event) => {
+                let wire = CrashedWire {
+                    id: id_wire(event.id),
+                    attempt: event.attempt,
+                    detail: event.detail.clone(),
+                    state: u32::from(event.state.code()),
+                    report: event.report.map(Into::into),
+                };
+                (CRASHED, wire.encode_to_vec())
+            }
+            Self::Examined(event) => (EXAMINED, examined_wire(event).encode_to_vec()),
+            Self::Withdrawn(id) => (WITHDRAWN, IdWire { id: id_wire(*id) }.encode_to_vec()),
+            Self::Retired(id) => (RETIRED, IdWire { id: id_wire(*id) }.encode_to_vec()),
+        };
+        (kind, VERSION, payload)
+    }
+
+    /// Reads a payload by its kind and version.
+    pub(crate) fn decode(kind: u32, version: u32, payload: &[u8]) -> Result<Self, EventError> {
+        if version != VERSION || !(CREATED..=RETIRED).contains(&kind) {
+            return Err(EventError::Unknown { kind, version });
+        }
+        decode_first(kind, payload).map_err(|detail| EventError::Payload { kind, detail })
+    }
+}
+
+fn decode_first(kind: u32, payload: &[u8]) -> Result<Event, String> {
+    fn message<M: Message + Default>(payload: &[u8]) -> Result<M, String> {
+        M::decode(payload).map_err(|error| error.to_string())
+    }
+    match kind {
+        CREATED => Ok(Event::Created(Box::new(created_of(message(payload)?)?))),
+        ARRAY_STORED => {
+            let wire: ArrayStoredWire = message(payload)?;
+            Ok(Event::ArrayStored(ArrayStored {
+                id: id_of(wire.id)?,
+                name: wire.array.name,
+                object: wire.array.object.try_into()?,
+            }))
+        }
+        CRASHED => {
+            let wire: CrashedWire = message(payload)?;
+            Ok(Event::Crashed(Crashed {
+                id: id_of(wire.id)?,
+                attempt: wire.attempt,
+                detail: wire.detail,
+                state: state_of(wire.state)?,
+                report: wire.report.map(TryInto::try_into).transpose()?,
+            }))
+        }
+        EXAMINED => Ok(Event::Examined(Box::new(examined_of(message(payload)?)?))),
+        _ => {
+            let id = id_of(message::<IdWire>(payload)?.id)?;
+            Ok(match kind {
+                SEALED => Event::Sealed(id),
+                WITHDRAWN => Event::Withdrawn(id),
+                _ => Event::Retired(id),
+            })
+        }
+    }
+}
+
+fn created_wire(event: &Created) -> CreatedWire {
+    CreatedWire {
+        id: id_wire(event.id),
+        request_id: event.request_id.clone(),
+        package_digest: event.package_digest.to_vec(),
+        manifest: event.manifest.into(),
+        arrays: event
+            .arrays
+            .iter()
+            .map(|array| ArrayWire {
+                name: array.name.clone(),
+                object: ObjectWire {
+                    digest: array.digest.to_vec(),
+                    size: array.size,
+                },
+            })
+            .collect(),
+        compound: event.compound.clone(),
+        form: event.form.clone(),
+        formula: event.formula.clone(),
+        contributor_key: event.contributor_key.clone(),
+        contributor: event.contributor.clone(),
+    }
+}
+
+fn created_of(wire: CreatedWire) -> Result<Created, &'static str> {
+    let mut arrays = Vec::with_capacity(wire.arrays.len());
+    for array in wire.arrays {
+        let object: ObjectRef = array.object.try_into()?;
+        arrays.push(DeclaredArray {
+            name: array.name,
+            size: object.size,
+            digest: object.digest,
+        });
+    }
+    Ok(Created {
+        id: id_of(wire.id)?,
+        request_id: wire.request_id,
+        package_digest: wire
+            .package_digest
+            .try_into()
+            .map_err(|_| "a digest has 32 bytes")?,
+        manifest: wire.manifest.try_into()?,
+        arrays,
+        compound: wire.compound,
+        form: wire.form,
+        formula: wire.formula,
+        contributor_key: wire.contributor_key,
+        contributor: wire.contributor,
+    })
+}
+
+fn examined_wire(event: &Examined) -> ExaminedWire {
+    ExaminedWire {
+        id: id_wire(event.id),
+        report: event.report.into(),
+        projected: event.projected.map(Into::into),
+        verdict: verdict_code(event.verdict),
+        state: u32::from(event.state.code()),
+        summary: event.summary.as_ref().map(Into::into),
+        supersedes: event.supersedes.map(id_wire),
+        superseded_by: event.superseded_by.map(id_wire),
+    }
+}
+
+fn examined_of(wire: ExaminedWire) -> Result<Examined, &'static str> {
+    Ok(Examined {
+        id: id_of(wire.id)?,
+        report: wire.report.try_into()?,
+        projected: wire.projected.map(TryInto::try_into).transpose()?,
+        verdict: verdict_of(wire.verdict).ok_or("a verdict is not known")?,
+        state: state_of(wire.state)?,
+        summary: wire.summary.map(Into::into),
+        supersedes: wire.supersedes.map(id_of).transpose()?,
+        superseded_by: wire.superseded_by.map(id_of).transpose()?,
+    })
+}
