@@ -9,6 +9,7 @@ use std::process::ExitCode;
 use tracing_subscriber::EnvFilter;
 
 use crate::config::{Config, LogFormat};
+use crate::failure::with_sources;
 
 /// Exit code of a bad configuration or a bad command line.
 pub const EXIT_CONFIGURATION: u8 = 64;
@@ -137,12 +138,7 @@ pub fn stop_signal() -> std::io::Result<impl Future<Output = ()> + Send + 'stati
 
 /// Writes why the service failed and gives the exit code.
 pub fn failed(error: &dyn std::error::Error) -> ExitCode {
-    let mut words = error.to_string();
-    let mut source = error.source();
-    while let Some(inner) = source {
-        words = format!("{words}: {inner}");
-        source = inner.source();
-    }
+    let words = with_sources(error);
     let _ = writeln!(std::io::stderr(), "tarehouse-server: {words}");
     ExitCode::FAILURE
 }

@@ -7,6 +7,7 @@
 use std::collections::HashMap;
 use std::time::Duration;
 
+use tarehouse_store::StoreError;
 use tonic::{Code, Status};
 use tonic_types::{ErrorDetails, FieldViolation, QuotaViolation, StatusExt as _};
 
@@ -18,6 +19,13 @@ pub const VIOLATIONS_MAX: usize = 20;
 
 /// Longest text of one violation that a status carries, bytes.
 const VIOLATION_BYTES_MAX: usize = 240;
+
+/// All violations of a status together, bytes: common clients refuse headers beyond 8 KiB, and this grows by a third
+/// on its way there.
+const DETAIL_BYTES_MAX: usize = 4400;
+
+/// When to come back to a store that cannot serve.
+const STORE_RETRY_AFTER: Duration = Duration::from_secs(30);
 
 /// Reasons of `ErrorInfo`; only ever appended to.
 pub mod reason {
@@ -37,8 +45,10 @@ pub mod reason {
     pub const OFFSET_MISMATCH: &str = "OFFSET_MISMATCH";
     /// More bytes than announced.
     pub const SIZE_EXCEEDED: &str = "SIZE_EXCEEDED";
-    /// The whole array's size or digest is not the declared one.
+    /// The digest of the whole array is not the declared one.
     pub const DIGEST_MISMATCH: &str = "DIGEST_MISMATCH";
+    /// The size of the whole array is not the declared one.
+    pub const SIZE_MISMATCH: &str = "SIZE_MISMATCH";
     /// The caller was silent for too long.
     pub const STREAM_IDLE: &str = "STREAM_IDLE";
     /// The method's time is over.
@@ -67,6 +77,12 @@ pub mod reason {
     pub const QUEUE_FULL: &str = "QUEUE_FULL";
     /// Too many upload streams are open.
     pub const UPLOADS_FULL: &str = "UPLOADS_FULL";
+    /// Too many watches are open.
+    pub const WATCHES_FULL: &str = "WATCHES_FULL";
+    /// Too many arrays are being fetched.
+    pub const FETCHES_FULL: &str = "FETCHES_FULL";
+    /// A temperature lies outside the grid of the policy.
+    pub const TEMPERATURE_OUTSIDE: &str = "TEMPERATURE_OUTSIDE";
     /// The service is stopping.
     pub const DRAINING: &str = "DRAINING";
     /// The principal holds too many drafts.
@@ -98,6 +114,8 @@ pub(crate) enum Failure {
         reason: &'static str,
         message: String,
         breaches: Vec<Breach>,
+        /// Breaches beyond those listed.
+        unlisted_count: usize,
     },
     /// What was asked for is not there.
     NotFound {
@@ -108,6 +126,7 @@ pub(crate) enum Failure {
     Conflict {
         reason: &'static str,
         message: String,
+        retry_after: Option<Duration>,
     },
     /// The request id stands for something else.
     Exists {
@@ -125,6 +144,11 @@ pub(crate) enum Failure {
         reason: &'static str,
         message: String,
         retry_after: Duration,
+    },
+    /// The service has nothing left to give.
+    Exhausted {
+        reason: &'static str,
+        message: String,
     },
     /// The caller has used up what it may use.
     Quota {
@@ -155,6 +179,7 @@ impl Failure {
                 field: field.to_owned(),
                 message,
             }],
+            unlisted_count: 0,
         }
     }
 
@@ -163,6 +188,16 @@ impl Failure {
         Self::Invalid {
             reason,
             message: message.into(),
+            breaches: Vec::new(),
+            unlisted_count: 0,
+        }
+    }
+
+    /// The present state does not allow it.
+    pub(crate) fn forbidden(reason: &'static str, message: String) -> Self {
+        Self::Forbidden {
+            reason,
+            message,
             breaches: Vec::new(),
         }
     }
@@ -184,6 +219,79 @@ impl Failure {
     }
 }
 
+impl From<StoreError> for Failure {
+    fn from(error: StoreError) -> Self {
+        let message = error.to_string();
+        match error {
+            StoreError::Invalid(violations) => Self::Invalid {
+                reason: reason::REQUEST_INVALID,
+                message: "the request breaks limits of the store".to_owned(),
+                breaches: violations
+                    .into_iter()
+                    .map(|violation| Breach {
+                        field: violation.field,
+                        message: violation.message,
+                    })
+                    .collect(),
+                unlisted_count: 0,
+            },
+            StoreError::NotFound(_) => Self::NotFound {
+                reason: reason::SUBMISSION_NOT_FOUND,
+                message,
+            },
+            StoreError::NoSuchArray { .. } | StoreError::NotThereYet { .. } => Self::NotFound {
+                reason: reason::ARRAY_NOT_FOUND,
+                message,
+            },
+            StoreError::RequestConflict { .. } => Self::Exists {
+                reason: reason::REQUEST_ID_CONFLICT,
+                message,
+            },
+            StoreError::Forbidden { .. }
+            | StoreError::NotADraft { .. }
+            | StoreError::AlreadyStored { .. } => Self::forbidden(reason::STATE_FORBIDS, message),
+            StoreError::WrongOffset { .. } => Self::forbidden(reason::OFFSET_MISMATCH, message),
+            StoreError::TooLong { .. } => Self::invalid(reason::SIZE_EXCEEDED, message),
+            StoreError::TooShort { .. } => Self::invalid(reason::SIZE_MISMATCH, message),
+            StoreError::DigestMismatch { .. } => Self::invalid(reason::DIGEST_MISMATCH, message),
+            StoreError::ArraysMissing { .. } => Self::forbidden(reason::ARRAYS_MISSING, message),
+            StoreError::PageToken | StoreError::PageTokenFilter => {
+                Self::field("page_token", message)
+            }
+            StoreError::ObjectDamaged { .. } => Self::Damaged { message },
+            StoreError::NoSpace => Self::Exhausted {
+                reason: reason::NO_SPACE,
+                message,
+            },
+            StoreError::Io { .. } => Self::internal(with_sources(&error)),
+            StoreError::ReadOnly(_)
+            | StoreError::Poisoned(_)
+            | StoreError::IndexUnavailable { .. } => {
+                tracing::error!(%message, "the store cannot serve");
+                Self::Unavailable {
+                    reason: reason::STORE_UNAVAILABLE,
+                    message:
+                        "the store cannot serve this now; the operator has been told in the log"
+                            .to_owned(),
+                    retry_after: STORE_RETRY_AFTER,
+                }
+            }
+            StoreError::Closed => Self::draining(),
+        }
+    }
+}
+
+/// An error with its sources, for the log.
+pub(crate) fn with_sources(error: &dyn std::error::Error) -> String {
+    let mut words = error.to_string();
+    let mut source = error.source();
+    while let Some(inner) = source {
+        words = format!("{words}: {inner}");
+        source = inner.source();
+    }
+    words
+}
+
 impl From<Failure> for Status {
     fn from(failure: Failure) -> Self {
         match failure {
@@ -191,15 +299,32 @@ impl From<Failure> for Status {
                 reason,
                 message,
                 breaches,
-            } => violated(Code::InvalidArgument, reason, message, breaches),
+                unlisted_count,
+            } => violated(
+                Code::InvalidArgument,
+                reason,
+                message,
+                breaches,
+                unlisted_count,
+            ),
             Failure::NotFound { reason, message } => plain(Code::NotFound, reason, message),
-            Failure::Conflict { reason, message } => plain(Code::Aborted, reason, message),
+            Failure::Conflict {
+                reason,
+                message,
+                retry_after,
+            } => {
+                let mut details = info(reason);
+                if retry_after.is_some() {
+                    details.set_retry_info(retry_after);
+                }
+                Self::with_error_details(Code::Aborted, message, details)
+            }
             Failure::Exists { reason, message } => plain(Code::AlreadyExists, reason, message),
             Failure::Forbidden {
                 reason,
                 message,
                 breaches,
-            } => violated(Code::FailedPrecondition, reason, message, breaches),
+            } => violated(Code::FailedPrecondition, reason, message, breaches, 0),
             Failure::Unavailable {
                 reason,
                 message,
@@ -219,6 +344,9 @@ impl From<Failure> for Status {
                 details.set_retry_info(Some(retry_after));
                 details.set_quota_failure(vec![QuotaViolation::new(subject, message.clone())]);
                 Self::with_error_details(Code::ResourceExhausted, message, details)
+            }
+            Failure::Exhausted { reason, message } => {
+                plain(Code::ResourceExhausted, reason, message)
             }
             Failure::Late { reason, message } => plain(Code::DeadlineExceeded, reason, message),
             Failure::Damaged { message } => {
@@ -243,15 +371,26 @@ fn plain(code: Code, reason: &'static str, message: String) -> Status {
     Status::with_error_details(code, message, info(reason))
 }
 
-fn violated(code: Code, reason: &'static str, message: String, breaches: Vec<Breach>) -> Status {
+fn violated(
+    code: Code,
+    reason: &'static str,
+    message: String,
+    breaches: Vec<Breach>,
+    unlisted_count: usize,
+) -> Status {
     let mut details = info(reason);
-    let count = breaches.len();
-    let shown: Vec<FieldViolation> = breaches
-        .into_iter()
-        .take(VIOLATIONS_MAX)
-        .map(|breach| FieldViolation::new(breach.field, shortened(&breach.message)))
-        .collect();
-    let message = match count.saturating_sub(VIOLATIONS_MAX) {
+    let count = breaches.len() + unlisted_count;
+    let mut bytes_left = DETAIL_BYTES_MAX;
+    let mut shown = Vec::new();
+    for breach in breaches.into_iter().take(VIOLATIONS_MAX) {
+        let (field, words) = (shortened(&breach.field), shortened(&breach.message));
+        let Some(left) = bytes_left.checked_sub(field.len() + words.len()) else {
+            break;
+        };
+        bytes_left = left;
+        shown.push(FieldViolation::new(field, words));
+    }
+    let message = match count - shown.len() {
         0 => message,
         more => format!("{message} ({count} violations, {more} more than are listed)"),
     };
@@ -278,27 +417,44 @@ mod tests {
 
     #[test]
     fn a_status_lists_twenty_violations_and_counts_the_rest() {
-        for (count, listed) in [(1, 1), (20, 20), (21, 20), (500, 20)] {
+        for (count, length, listed) in [
+            (1, 10, 1),
+            (19, 10, 19),
+            (20, 10, 20),
+            (21, 10, 20),
+            (500, 10, 20),
+            (20, 1000, 17),
+        ] {
             let breaches = (0..count)
                 .map(|k| Breach {
                     field: format!("f[{k}]"),
-                    message: "x".repeat(1000),
+                    message: "x".repeat(length),
                 })
                 .collect();
             let status = Status::from(Failure::Invalid {
                 reason: reason::PACKAGE_INVALID,
                 message: "no".to_owned(),
                 breaches,
+                unlisted_count: 3,
             });
             let details = status.get_error_details();
             let found = details.bad_request().unwrap().field_violations.len();
             assert_eq!(found, listed);
-            assert_eq!(
-                status.message().contains("more than are listed"),
-                count > listed
-            );
-            assert!(status.details().len() < 7000, "{}", status.details().len());
+            let more = format!("{} more than are listed", count + 3 - listed);
+            assert!(status.message().contains(&more), "{}", status.message());
+            assert!(status.details().len() < 5000, "{}", status.details().len());
         }
+    }
+
+    #[test]
+    fn what_is_listed_in_full_is_not_counted() {
+        let status = Status::from(Failure::field("name", "is bad"));
+        assert_eq!(status.message(), "name: is bad");
+        let details = status.get_error_details();
+        assert_eq!(
+            details.bad_request().unwrap().field_violations[0].field,
+            "name"
+        );
     }
 
     #[test]

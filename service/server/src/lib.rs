@@ -7,13 +7,25 @@
 pub mod command;
 pub mod config;
 mod core;
+mod depot;
 mod drain;
 mod examiner;
+mod facts;
 pub mod failure;
+mod fetch;
+mod hub;
+mod judge;
 mod layers;
 pub mod limits;
+mod names;
+mod ranking;
+mod receive;
 mod serve;
 mod services;
+mod uploads;
+mod watch;
+mod wire;
+mod workers;
 
 pub use config::{Config, ConfigError};
 pub use core::OpenError;

@@ -1,37 +1,53 @@
 //! The one table of what this service takes at most. `GetServerInfo` tells it; every handler keeps to it.
 
-use tarehouse_proto::v1;
+use tarehouse_proto::{limits, v1};
 
 /// Bytes of one chunk.
-pub const CHUNK_BYTES_MAX: usize = 512 * 1024;
+pub const CHUNK_BYTES_MAX: usize = narrow(limits::CHUNK_BYTES.max);
 /// Bytes of one message of an upload stream, frame and all.
 pub const UPLOAD_MESSAGE_BYTES_MAX: usize = 1024 * 1024;
 /// Bytes of one message to any other method: a manifest with its declarations.
 pub const MESSAGE_BYTES_MAX: usize = 2 * 1024 * 1024;
 /// Entries on one page of a list.
-pub const PAGE_SIZE_MAX: u32 = 200;
+pub const PAGE_SIZE_MAX: u32 = narrow(limits::PAGE_SIZE.max) as u32;
 /// Entries on one page where the request says 0.
-pub const PAGE_SIZE_DEFAULT: u32 = 50;
+pub const PAGE_SIZE_DEFAULT: u32 = limits::PAGE_SIZE_DEFAULT;
 /// Temperatures in one ranking.
-pub const TEMPERATURES_MAX: usize = 64;
+pub const TEMPERATURES_MAX: usize = narrow(limits::TEMPERATURES.max);
 /// Records that one ranking reads.
 pub const RANKED_RECORDS_MAX: usize = 2000;
+/// Arrays of one submission.
+pub const ARRAYS_MAX: usize = tarehouse_store::limits::ARRAY_COUNT_MAX;
+/// Watches open at the same time.
+pub const WATCHES_MAX: usize = 1024;
 /// Bytes of a free text: reason, compound, level, contributor key in a filter.
 pub const TEXT_BYTES_MAX: usize = 1024;
-/// Attempts at an examination before it is given to a curator.
-pub const ATTEMPTS_MAX: u32 = 3;
+
+/// A limit of the contract as a length in memory; each is far below 2^32.
+#[allow(
+    clippy::cast_possible_truncation,
+    reason = "the limits of the contract are checked to be small at compile time"
+)]
+const fn narrow(limit: u64) -> usize {
+    assert!(
+        limit <= u32::MAX as u64,
+        "a limit of the contract is too large"
+    );
+    limit as usize
+}
 
 /// The table as `GetServerInfo` tells it.
 pub(crate) fn on_the_wire(upload_streams_max: usize) -> v1::Limits {
+    let count = |n: usize| u32::try_from(n).unwrap_or(u32::MAX);
     v1::Limits {
-        atoms_max: 2048,
-        cells_max: tarehouse_physics::supercell::CELLS_MAX,
-        array_bytes_max: 2 << 30,
-        manifest_bytes_max: 1 << 20,
-        chunk_bytes_max: CHUNK_BYTES_MAX as u64,
+        atoms_max: limits::ATOMS.max,
+        cells_max: limits::CELLS.max,
+        array_bytes_max: limits::ARRAY_BYTES.max,
+        manifest_bytes_max: limits::MANIFEST_BYTES.max,
+        chunk_bytes_max: limits::CHUNK_BYTES.max,
         page_size_max: PAGE_SIZE_MAX,
         page_size_default: PAGE_SIZE_DEFAULT,
-        temperatures_max: TEMPERATURES_MAX as u32,
-        upload_streams_max: u32::try_from(upload_streams_max).unwrap_or(u32::MAX),
+        temperatures_max: count(TEMPERATURES_MAX),
+        upload_streams_max: count(upload_streams_max),
     }
 }

@@ -33,6 +33,7 @@ use crate::config::Config;
 use crate::core::{Core, OpenError};
 use crate::examiner::{Assay, Examiner};
 use crate::layers::{Deadlines, Gate, panicked};
+use crate::services;
 
 /// Pause between two pings of a silent connection.
 const KEEPALIVE_INTERVAL: Duration = Duration::from_secs(30);
@@ -60,6 +61,9 @@ pub enum ServeError {
     /// The transport failed.
     #[error("the transport failed")]
     Transport(#[from] tonic::transport::Error),
+    /// A sync failed: whether the last changes are durable is not known, and the process must end.
+    #[error("the store takes no more changes because a sync failed")]
+    Broken,
     /// The task that serves has ended without an answer.
     #[error("the serving task failed")]
     Task(#[from] tokio::task::JoinError),
@@ -175,7 +179,7 @@ where
     let stopping = async {
         tokio::select! {
             () = shutdown => {}
-            () = core.until_poisoned() => tracing::error!("the store takes no more writes: stopping"),
+            () = core.depot.until_broken() => tracing::error!("the store takes no more writes: stopping"),
         }
     };
     let early = tokio::select! {
@@ -205,7 +209,11 @@ where
         );
     }
     core.close().await;
-    Ok(ended?)
+    ended?;
+    if core.depot.is_broken() {
+        return Err(ServeError::Broken);
+    }
+    Ok(())
 }
 
 /// The transport with the layers of every call, outermost first; it stops accepting when `closing` is cancelled.
@@ -238,7 +246,7 @@ where
 /// All services, and the reporter of their health.
 async fn routes(core: &Arc<Core>) -> Result<(HealthReporter, Routes), ServeError> {
     let (reporter, health) = tonic_health::server::health_reporter();
-    for name in ["", "tarehouse.v1.ServerService"] {
+    for name in health_names() {
         reporter
             .set_service_status(name, ServingStatus::Serving)
             .await;
@@ -252,17 +260,26 @@ async fn routes(core: &Arc<Core>) -> Result<(HealthReporter, Routes), ServeError
     routes
         .add_service(health)
         .add_service(described().build_v1()?)
-        .add_service(described().build_v1alpha()?)
-        .add_service(crate::services::server(core));
+        .add_service(described().build_v1alpha()?);
+    services::add(&mut routes, core);
     Ok((reporter, routes.routes()))
 }
 
+/// What health speaks of: the whole, then each service.
+fn health_names() -> impl Iterator<Item = &'static str> {
+    std::iter::once("").chain(services::NAMES)
+}
+
 /// Says NOT_SERVING, refuses new work, and ends the watches, those of health among them.
-async fn stop_taking_work(core: &Core, health: HealthReporter) {
-    for name in ["", "tarehouse.v1.ServerService"] {
+async fn stop_taking_work(core: &Core, mut health: HealthReporter) {
+    for name in health_names() {
         health
             .set_service_status(name, ServingStatus::NotServing)
             .await;
     }
     core.drain.begin();
+    // Watches of health end with what they watch.
+    for name in health_names() {
+        health.clear_service_status(name).await;
+    }
 }

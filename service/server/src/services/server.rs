@@ -1,9 +1,8 @@
 //! ServerService: what the server says about itself.
 
-use std::fmt::Write as _;
 use std::sync::Arc;
 
-use tarehouse_assay::report::{LikelyCause, Rule};
+use tarehouse_proto::convert::{digest_to_hex, likely_cause_names, rule_names};
 use tarehouse_proto::v1;
 use tonic::{Request, Response, Status};
 
@@ -25,28 +24,12 @@ impl Service {
                 version: tarehouse_assay::PROGRAM_VERSION.to_owned(),
                 limits: Some(limits::on_the_wire(core.config.upload_streams_max)),
                 policy_text: policy.text.clone(),
-                policy_digest: hexadecimal(&policy.digest),
-                rules: Rule::ALL
-                    .iter()
-                    .map(|rule| rule.name().to_owned())
-                    .collect(),
-                likely_causes: LikelyCause::ALL
-                    .iter()
-                    .map(|cause| cause.name().to_owned())
-                    .collect(),
+                policy_digest: digest_to_hex(&policy.digest),
+                rules: rule_names(),
+                likely_causes: likely_cause_names(),
             },
         }
     }
-}
-
-fn hexadecimal(digest: &[u8]) -> String {
-    digest
-        .iter()
-        .fold(String::with_capacity(2 * digest.len()), |mut text, byte| {
-            // Writing into a string does not fail.
-            let _ = write!(text, "{byte:02x}");
-            text
-        })
 }
 
 #[tonic::async_trait]
