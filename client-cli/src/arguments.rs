@@ -28,32 +28,44 @@ pub struct Arguments {
 #[derive(Debug, Subcommand)]
 pub enum Command {
     /// Examine a package here, without a server.
-    #[command(after_help = "Examples:\n  tarehouse precheck form-ii\n  tarehouse precheck form-ii --format json\n  \
-        tarehouse precheck form-ii --policy strict.toml")]
+    #[command(
+        after_help = "Examples:\n  tarehouse precheck form-ii\n  tarehouse precheck form-ii --format json\n  \
+        tarehouse precheck form-ii --policy strict.toml"
+    )]
     Precheck(PrecheckArgs),
     /// Send packages, wait for the verdicts, end with a summary.
-    #[command(after_help = "A folder that is not a valid package is listed with everything that is wrong; nothing of it \
+    #[command(
+        after_help = "A folder that is not a valid package is listed with everything that is wrong; nothing of it \
         is sent.\nRunning the same command again goes on where it stopped.\n\nExamples:\n  \
         tarehouse submit form-i form-ii --server http://tare.example:7417\n  \
         tarehouse submit landscape/* --local ./store\n  \
-        tarehouse submit form-i --no-wait --format json")]
+        tarehouse submit form-i --no-wait --format json"
+    )]
     Submit(SubmitArgs),
     /// Wait for the verdict of a submission.
-    #[command(after_help = "Examples:\n  tarehouse watch 3f2a… --server http://tare.example:7417\n  \
-        tarehouse watch submissions/3f2a… --timeout 600")]
+    #[command(
+        after_help = "Examples:\n  tarehouse watch 3f2a… --server http://tare.example:7417\n  \
+        tarehouse watch submissions/3f2a… --timeout 600"
+    )]
     Watch(WatchArgs),
     /// Show the report of a submission or record: reasons, findings, soft modes, free energies.
-    #[command(after_help = "Examples:\n  tarehouse report 3f2a…\n  tarehouse report records/3f2a… --all\n  \
-        tarehouse report 3f2a… --format json > report.json")]
+    #[command(
+        after_help = "Examples:\n  tarehouse report 3f2a…\n  tarehouse report records/3f2a… --all\n  \
+        tarehouse report 3f2a… --format json > report.json"
+    )]
     Report(ReportArgs),
     /// List records, submissions or compounds.
-    #[command(after_help = "Examples:\n  tarehouse list\n  tarehouse list records --compound \"velnaric acid\"\n  \
-        tarehouse list submissions --state held\n  tarehouse list compounds --format json")]
+    #[command(
+        after_help = "Examples:\n  tarehouse list\n  tarehouse list records --compound \"velnaric acid\"\n  \
+        tarehouse list submissions --state held\n  tarehouse list compounds --format json"
+    )]
     List(ListArgs),
     /// Fetch a file of a submission or record, as contributed or projected.
-    #[command(after_help = "Examples:\n  tarehouse fetch records/3f2a… --out constants.npy\n  \
+    #[command(
+        after_help = "Examples:\n  tarehouse fetch records/3f2a… --out constants.npy\n  \
         tarehouse fetch records/3f2a… --projected --out projected.npy\n  \
-        tarehouse fetch records/3f2a… --array package.toml --out package.toml")]
+        tarehouse fetch records/3f2a… --array package.toml --out package.toml"
+    )]
     Fetch(FetchArgs),
     /// Rank the forms of a compound by free energy at chosen temperatures.
     #[command(after_help = "Examples:\n  tarehouse rank \"velnaric acid\"\n  \
@@ -311,13 +323,18 @@ mod tests {
 
     #[test]
     fn temperatures_are_a_list_of_kelvin() {
-        let Command::Rank(rank) = parse("tarehouse rank x --temperature 0,100,298.15K").unwrap().command
+        let Command::Rank(rank) = parse("tarehouse rank x --temperature 0,100,298.15K")
+            .unwrap()
+            .command
         else {
             panic!("not rank");
         };
         assert_eq!(rank.temperature, [0.0, 100.0, 298.15]);
         for wrong in ["-1", "nan", "inf", "warm", ""] {
-            assert!(parse(&format!("tarehouse rank x --temperature={wrong}")).is_err(), "{wrong}");
+            assert!(
+                parse(&format!("tarehouse rank x --temperature={wrong}")).is_err(),
+                "{wrong}"
+            );
         }
     }
 
@@ -329,10 +346,23 @@ mod tests {
             "tarehouse fetch a --projected --array b --out c",
             "tarehouse submit a --no-wait --timeout 3",
         ] {
-            assert_eq!(parse(line).unwrap_err().kind(), ErrorKind::ArgumentConflict, "{line}");
+            assert_eq!(
+                parse(line).unwrap_err().kind(),
+                ErrorKind::ArgumentConflict,
+                "{line}"
+            );
         }
-        for line in ["tarehouse submit", "tarehouse rank", "tarehouse fetch a", "tarehouse watch"] {
-            assert_eq!(parse(line).unwrap_err().kind(), ErrorKind::MissingRequiredArgument, "{line}");
+        for line in [
+            "tarehouse submit",
+            "tarehouse rank",
+            "tarehouse fetch a",
+            "tarehouse watch",
+        ] {
+            assert_eq!(
+                parse(line).unwrap_err().kind(),
+                ErrorKind::MissingRequiredArgument,
+                "{line}"
+            );
         }
     }
 
@@ -342,10 +372,15 @@ mod tests {
             panic!("not list");
         };
         assert_eq!(list.what, Listed::Records);
-        let Command::List(list) = parse("tarehouse list submissions --state held").unwrap().command
+        let Command::List(list) = parse("tarehouse list submissions --state held")
+            .unwrap()
+            .command
         else {
             panic!("not list");
         };
-        assert_eq!((list.what, list.state), (Listed::Submissions, Some(StateFilter::Held)));
+        assert_eq!(
+            (list.what, list.state),
+            (Listed::Submissions, Some(StateFilter::Held))
+        );
     }
 }

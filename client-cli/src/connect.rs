@@ -44,7 +44,9 @@ impl Target {
     /// # Errors
     /// [`Failure::Usage`] where neither names a service.
     pub fn choose(args: &ConnectArgs, from_environment: Option<&str>) -> Result<Self, Failure> {
-        let from_environment = from_environment.map(str::trim).filter(|text| !text.is_empty());
+        let from_environment = from_environment
+            .map(str::trim)
+            .filter(|text| !text.is_empty());
         match (&args.local, args.server.as_deref().or(from_environment)) {
             (Some(dir), _) => Ok(Self::Local(dir.clone())),
             (None, Some(url)) => Ok(Self::Server(address(url)?)),
@@ -129,8 +131,7 @@ impl Session {
 
     /// Arrays.
     pub fn transfers(&self) -> TransferServiceClient<Channel> {
-        TransferServiceClient::new(self.channel.clone())
-            .max_decoding_message_size(ANSWER_BYTES_MAX)
+        TransferServiceClient::new(self.channel.clone()).max_decoding_message_size(ANSWER_BYTES_MAX)
     }
 
     /// The shared list.

@@ -42,8 +42,7 @@ pub struct CheckedPackage {
 /// [`Failure::InvalidPackage`] with every violation; [`Failure::File`] where the folder cannot be looked at.
 pub fn read(folder: &Path) -> Result<CheckedPackage, Failure> {
     let label = folder.display().to_string();
-    let metadata =
-        fs::metadata(folder).map_err(|error| Failure::file("look at", folder, error))?;
+    let metadata = fs::metadata(folder).map_err(|error| Failure::file("look at", folder, error))?;
     if !metadata.is_dir() {
         return Err(invalid(
             label,
@@ -82,11 +81,19 @@ pub fn read_built_in(folder: &Dir<'static>) -> Result<CheckedPackage, Failure> {
     let mut manifest = Bytes::new();
     let mut arrays = BTreeMap::new();
     for file in folder.files() {
-        let name = file.path().file_name().unwrap_or_default().to_string_lossy();
+        let name = file
+            .path()
+            .file_name()
+            .unwrap_or_default()
+            .to_string_lossy();
         let contents = Bytes::from_static(file.contents());
         if name == MANIFEST_FILE {
             manifest = contents;
-        } else if file.path().extension().is_some_and(|extension| extension == "npy") {
+        } else if file
+            .path()
+            .extension()
+            .is_some_and(|extension| extension == "npy")
+        {
             arrays.insert(name.into_owned(), contents);
         }
     }
@@ -160,7 +167,9 @@ fn named_arrays(manifest: &[u8]) -> Vec<String> {
 /// Reads one file of the folder, or says why not.
 fn read_file(folder: &Path, name: &str, limit: Limit) -> Result<Bytes, String> {
     if !is_plain_name(name) {
-        return Err(format!("{name}: not a plain file name; arrays lie beside the manifest"));
+        return Err(format!(
+            "{name}: not a plain file name; arrays lie beside the manifest"
+        ));
     }
     let path = folder.join(name);
     let said = |error: std::io::Error| match error.kind() {
@@ -202,7 +211,17 @@ mod tests {
         for name in ["constants.npy", "a b.npy", "..npy"] {
             assert!(is_plain_name(name), "{name}");
         }
-        for name in ["", ".", "..", "../x", "/etc/passwd", "a/b", "a\\b", "a/", "x\0"] {
+        for name in [
+            "",
+            ".",
+            "..",
+            "../x",
+            "/etc/passwd",
+            "a/b",
+            "a\\b",
+            "a/",
+            "x\0",
+        ] {
             assert!(!is_plain_name(name), "{name:?}");
         }
     }
@@ -220,8 +239,16 @@ mod tests {
             assert_eq!(read.is_ok(), is_taken, "{size}");
         }
         fs::create_dir(folder.path().join("d")).unwrap();
-        assert!(read_file(folder.path(), "d", limit).unwrap_err().contains("regular"));
-        assert!(read_file(folder.path(), "none", limit).unwrap_err().contains("missing"));
+        assert!(
+            read_file(folder.path(), "d", limit)
+                .unwrap_err()
+                .contains("regular")
+        );
+        assert!(
+            read_file(folder.path(), "none", limit)
+                .unwrap_err()
+                .contains("missing")
+        );
     }
 
     #[test]

@@ -180,7 +180,11 @@ mod tests {
             calls += 1;
             let answer = if calls <= 50 {
                 let details = ErrorDetails::with_retry_info(Some(Duration::from_secs(3)));
-                Err(Status::with_error_details(Code::Unavailable, "full", details))
+                Err(Status::with_error_details(
+                    Code::Unavailable,
+                    "full",
+                    details,
+                ))
             } else {
                 Ok(calls)
             };
@@ -194,9 +198,12 @@ mod tests {
     #[tokio::test]
     async fn a_final_error_is_not_tried_again() {
         let (pause, lengths) = noted();
-        for code in [Code::InvalidArgument, Code::ResourceExhausted, Code::Internal] {
-            let answer =
-                retrying(&pause, || async { Err::<(), _>(Status::new(code, "no")) }).await;
+        for code in [
+            Code::InvalidArgument,
+            Code::ResourceExhausted,
+            Code::Internal,
+        ] {
+            let answer = retrying(&pause, || async { Err::<(), _>(Status::new(code, "no")) }).await;
             assert_eq!(answer.unwrap_err().code(), code);
         }
         assert!(lengths.lock().unwrap().is_empty());

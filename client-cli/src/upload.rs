@@ -10,6 +10,7 @@ use tarehouse_proto::v1::{
     SealSubmissionRequest, SendArrayFinish, SendArrayOpen, SendArrayRequest, State, Submission,
 };
 use tonic::{Code, Status};
+use tonic_types::StatusExt as _;
 
 use crate::connect::{Session, asking, sealing};
 use crate::failure::Failure;
@@ -91,18 +92,35 @@ async fn send_array(
     let mut retry = Retry::new(pause.clone());
     let mut refused = 0;
     let mut furthest = 0;
+    let mut from_start = false;
     loop {
-        let failure = match send_once(session, submission, name, bytes, bar, &mut furthest).await {
-            Ok(array) => return Ok(array),
-            Err(failure) => failure,
+        let offset = if from_start {
+            Ok(0)
+        } else {
+            committed(session, submission, name).await
         };
-        if failure.advanced {
-            retry.progressed();
+        let sent = match offset {
+            Ok(offset) => {
+                let offset = offset.min(bytes.len() as u64);
+                if offset > furthest {
+                    furthest = offset;
+                    retry.progressed();
+                }
+                send_from(session, submission, name, bytes, bar, offset).await
+            }
+            Err(status) => Err(status),
+        };
+        let status = match sent {
+            Ok(array) => return Ok(array),
+            Err(status) => status,
+        };
+        // What arrived earlier is not what was sent: once more, all of it.
+        let is_damaged = reason(&status).is_some_and(|reason| reason == "DIGEST_MISMATCH");
+        if is_damaged && !from_start {
+            from_start = true;
+            continue;
         }
-        let status = failure.status;
-        // Another stream of the same array, perhaps our own that was cut; or damage on the way.
-        let may_pass = matches!(status.code(), Code::Aborted | Code::DataLoss);
-        if may_pass && refused < REFUSED_ATTEMPTS_MAX {
+        if may_pass(&status) && refused < REFUSED_ATTEMPTS_MAX {
             refused += 1;
             retry
                 .wait_after(Status::unavailable("the array was refused"))
@@ -114,44 +132,36 @@ async fn send_array(
     }
 }
 
-/// Why one attempt failed, and whether more had arrived than before.
-struct Attempt {
-    status: Status,
-    advanced: bool,
+/// Whether a refused upload may be taken after asking again what has arrived: another stream of the same array, perhaps
+/// our own that was cut, was still being written; or a piece was damaged on the way; or this machine slept.
+fn may_pass(status: &Status) -> bool {
+    const REASONS: [&str; 3] = ["OFFSET_MISMATCH", "CHECKSUM_MISMATCH", "STREAM_IDLE"];
+    matches!(status.code(), Code::Aborted | Code::DataLoss)
+        || reason(status).is_some_and(|reason| REASONS.contains(&reason.as_str()))
 }
 
-async fn send_once(
+fn reason(status: &Status) -> Option<String> {
+    let details = status.get_error_details();
+    details.error_info().map(|info| info.reason.clone())
+}
+
+async fn send_from(
     session: &Session,
     submission: &str,
     name: &str,
     bytes: &Bytes,
     bar: &Handle,
-    furthest: &mut u64,
-) -> Result<Array, Attempt> {
-    let offset = match committed(session, submission, name).await {
-        Ok(offset) => offset.min(bytes.len() as u64),
-        Err(status) => {
-            return Err(Attempt {
-                status,
-                advanced: false,
-            });
-        }
-    };
-    let advanced = offset > *furthest;
-    *furthest = offset.max(*furthest);
+    offset: u64,
+) -> Result<Array, Status> {
     bar.set(offset);
     let frames = frames(submission, name, bytes.clone(), offset, bar.clone());
-    let sent = session
+    session
         .transfers()
         .send_array(tokio_stream::iter(frames))
-        .await
-        .and_then(|answer| {
-            answer
-                .into_inner()
-                .array
-                .ok_or_else(|| Status::internal("an answer without its array"))
-        });
-    sent.map_err(|status| Attempt { status, advanced })
+        .await?
+        .into_inner()
+        .array
+        .ok_or_else(|| Status::internal("an answer without its array"))
 }
 
 /// Bytes of an array that the service holds.
@@ -188,7 +198,9 @@ pub fn frames(
         size_bytes: bytes.len() as u64,
         digest: blake3::hash(&bytes).to_hex().to_string(),
     });
-    let start = usize::try_from(offset).unwrap_or(usize::MAX).min(bytes.len());
+    let start = usize::try_from(offset)
+        .unwrap_or(usize::MAX)
+        .min(bytes.len());
     let chunks = (start..bytes.len()).step_by(CHUNK_BYTES).map(move |from| {
         let to = bytes.len().min(from + CHUNK_BYTES);
         let data = bytes.slice(from..to);
@@ -264,7 +276,10 @@ mod tests {
             else {
                 panic!("the ends are wrong");
             };
-            assert_eq!((open.offset_bytes, finish.size_bytes), (offset, size as u64));
+            assert_eq!(
+                (open.offset_bytes, finish.size_bytes),
+                (offset, size as u64)
+            );
             let mut place = offset;
             for frame in &frames[1..frames.len() - 1] {
                 let Frame::Chunk(chunk) = frame else {

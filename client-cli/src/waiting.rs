@@ -51,16 +51,14 @@ pub async fn until_final(
     let waiting = wait(session, name, bars, pause);
     match limit {
         None => waiting.await,
-        Some(limit) => {
-            tokio::time::timeout(limit, waiting)
-                .await
-                .unwrap_or_else(|_| {
-                    Err(Failure::Patience {
-                        name: name.to_owned(),
-                        waited_s: limit.as_secs(),
-                    })
+        Some(limit) => tokio::time::timeout(limit, waiting)
+            .await
+            .unwrap_or_else(|_| {
+                Err(Failure::Patience {
+                    name: name.to_owned(),
+                    waited_s: limit.as_secs(),
                 })
-        }
+            }),
     }
 }
 

@@ -3,10 +3,11 @@
 use std::path::{Path, PathBuf};
 
 use include_dir::{Dir, include_dir};
-use tarehouse_proto::v1::{State, Submission};
+use tarehouse_proto::v1::{Report, Severity, State, Submission};
 
 use super::precheck::blocking;
 use super::rank;
+use super::report;
 use super::submit::send_package;
 use super::{Context, ResumeNote, in_session};
 use crate::arguments::DemoArgs;
@@ -95,11 +96,15 @@ async fn show(
     let bars = context.bars();
     let pause = context.pause.clone();
     for folder in folders {
-        let package =
-            blocking("reading a package", move || package_folder::read_built_in(folder)).await??;
+        let package = blocking("reading a package", move || {
+            package_folder::read_built_in(folder)
+        })
+        .await??;
         let sent = send_package(session, &package.files, &bars, &pause).await?;
         let submission = waiting::until_final(session, &sent.name, &bars, None, &pause).await?;
-        context.console.data(&verdict(&package.files.folder, &submission, view))?;
+        let report = report::get(session, &submission.name, &pause).await?;
+        let text = verdict(&package.files.folder, &submission, &report, view);
+        context.console.data(&text)?;
         submissions.push(submission);
     }
     let mut compounds: Vec<String> = submissions
@@ -110,7 +115,7 @@ async fn show(
     compounds.sort();
     compounds.dedup();
     for compound in compounds {
-        let text = ranking(session, context, &compound, view).await?;
+        let text = ranking(session, context, &compound, &submissions).await?;
         context.console.data(&text)?;
     }
     context.console.data(&closing(&submissions, kept, view))?;
@@ -131,7 +136,7 @@ fn opening(view: View) -> String {
     page.finish()
 }
 
-fn verdict(folder: &str, submission: &Submission, view: View) -> String {
+fn verdict(folder: &str, submission: &Submission, report: &Report, view: View) -> String {
     let mut page = Page::new(view);
     let title = format!(
         "{} · form {} ({})",
@@ -147,22 +152,43 @@ fn verdict(folder: &str, submission: &Submission, view: View) -> String {
     );
     let reason = match submission.verdict_reasons.first() {
         Some(reason) => clean(reason).into_owned(),
-        None => words::verdict_sentence(submission.verdict()).to_owned(),
+        None => accepted_words(report),
     };
     page.hanging("  ", "    ", &format!("{word}: {reason}"));
     let more = submission.verdict_reasons.len().saturating_sub(1);
     if more > 0 {
-        page.paragraph(4, &format!("and {}.", counted(more, "more reason", "more reasons")));
+        page.paragraph(
+            4,
+            &format!("and {}.", counted(more, "more reason", "more reasons")),
+        );
     }
     page.finish()
+}
+
+/// What to say of an accepted package: its first caution, if it has any.
+fn accepted_words(report: &Report) -> String {
+    let mut cautions = report
+        .findings
+        .iter()
+        .filter(|finding| finding.severity() == Severity::Caution);
+    match cautions.next() {
+        None => words::verdict_sentence(report.verdict()).to_owned(),
+        Some(first) => format!(
+            "with {}: {}: {}",
+            counted(1 + cautions.count(), "caution", "cautions"),
+            clean(&first.rule),
+            clean(&first.message)
+        ),
+    }
 }
 
 async fn ranking(
     session: &Session,
     context: &Context<'_>,
     compound: &str,
-    view: View,
+    submissions: &[Submission],
 ) -> Result<String, Failure> {
+    let view = context.console.view();
     let tables = rank::get(session, compound, &TEMPERATURES_K, &context.pause).await?;
     let mut page = Page::new(view);
     page.line("");
@@ -176,6 +202,21 @@ async fn ranking(
     }
     if tables.iter().all(|table| order_changes(table).is_empty()) {
         page.paragraph(2, "No forms change their order between these temperatures.");
+    }
+    let left_out: Vec<String> = submissions
+        .iter()
+        .filter(|submission| submission.compound == compound && submission.record.is_empty())
+        .map(|submission| {
+            let state = words::state(submission.state());
+            format!("form {} ({state})", clean(&submission.form))
+        })
+        .collect();
+    if !left_out.is_empty() {
+        page.hanging(
+            "  ",
+            "    ",
+            &format!("Not ranked: {}.", left_out.join(", ")),
+        );
     }
     Ok(page.finish())
 }

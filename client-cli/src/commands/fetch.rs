@@ -15,7 +15,7 @@ use crate::arguments::FetchArgs;
 use crate::connect::{Session, asking, resource_name};
 use crate::exit::Exit;
 use crate::failure::Failure;
-use crate::progress::Handle;
+use crate::progress::{Bars, Handle};
 use crate::render::numbers::bytes;
 use crate::retry::{Pause, Retry};
 use crate::waiting;
@@ -43,7 +43,6 @@ pub async fn run(args: FetchArgs, context: &mut Context<'_>) -> Result<Exit, Fai
             Some(array) => array.clone(),
             None => constants_of(session, &name, &context.pause).await?,
         };
-        let bar = context.bars().bytes(&array, 0);
         let wanted = FetchArrayRequest {
             name: name.clone(),
             array,
@@ -55,9 +54,15 @@ pub async fn run(args: FetchArgs, context: &mut Context<'_>) -> Result<Exit, Fai
             .into(),
             offset_bytes: 0,
         };
-        let mut fetch = Fetch::new(wanted, &args.out, bar.handle())?;
-        fetch.run(session, &context.pause).await?;
-        fetch.finish(&args.out, args.force)
+        to_file(
+            session,
+            wanted,
+            &args.out,
+            args.force,
+            &context.bars(),
+            &context.pause,
+        )
+        .await
     })
     .await?;
     context.console.message(&format!(
@@ -69,6 +74,24 @@ pub async fn run(args: FetchArgs, context: &mut Context<'_>) -> Result<Exit, Fai
         args.out.display()
     ));
     Ok(Exit::Done)
+}
+
+/// Fetches one file to `out`, which appears only when every byte has been verified.
+///
+/// # Errors
+/// The service's answer; [`Failure::Damaged`] where the bytes are not the announced ones.
+pub async fn to_file(
+    session: &Session,
+    wanted: FetchArrayRequest,
+    out: &Path,
+    overwrite: bool,
+    bars: &Bars,
+    pause: &Pause,
+) -> Result<FetchArrayHeader, Failure> {
+    let bar = bars.bytes(&wanted.array, 0);
+    let mut fetch = Fetch::new(wanted, out, bar.handle())?;
+    fetch.run(session, pause).await?;
+    fetch.finish(out, overwrite)
 }
 
 /// The name of the force constants of a submission or record.
@@ -179,7 +202,11 @@ impl Fetch {
                 Some(Some(Frame::Chunk(chunk))) => self.take_chunk(&chunk)?,
                 Some(None) => {}
                 None if self.is_complete() => return Ok(Ok(())),
-                None => return Ok(Err(Status::unavailable("the stream ended before the file did"))),
+                None => {
+                    return Ok(Err(Status::unavailable(
+                        "the stream ended before the file did",
+                    )));
+                }
             }
         }
     }

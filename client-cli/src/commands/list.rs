@@ -75,18 +75,33 @@ pub async fn run(args: ListArgs, context: &mut Context<'_>) -> Result<Exit, Fail
 /// A filter that the list does not know would be silently ignored: refuse it.
 fn check_filters(args: &ListArgs) -> Result<(), Failure> {
     let given = [
-        ("--compound", args.compound.is_some(), &[Listed::Records, Listed::Submissions][..]),
+        (
+            "--compound",
+            args.compound.is_some(),
+            &[Listed::Records, Listed::Submissions][..],
+        ),
         ("--form", args.form.is_some(), &[Listed::Records]),
         ("--retired", args.retired, &[Listed::Records]),
         ("--state", args.state.is_some(), &[Listed::Submissions]),
-        ("--contributor-key", args.contributor_key.is_some(), &[Listed::Submissions]),
+        (
+            "--contributor-key",
+            args.contributor_key.is_some(),
+            &[Listed::Submissions],
+        ),
     ];
     for (option, is_given, fitting) in given {
         if is_given && !fitting.contains(&args.what) {
-            let names: Vec<String> = fitting.iter().map(|what| format!("{what:?}").to_lowercase()).collect();
+            let names: Vec<String> = fitting
+                .iter()
+                .map(|what| format!("{what:?}").to_lowercase())
+                .collect();
             return Err(Failure::Usage {
                 what: format!("{option} does not apply to this list"),
-                next: format!("it filters {}: `tarehouse list {} {option} …`.", names.join(" and "), names.join("|")),
+                next: format!(
+                    "it filters {}: `tarehouse list {} {option} …`.",
+                    names.join(" and "),
+                    names.join("|")
+                ),
             });
         }
     }
@@ -222,7 +237,11 @@ mod tests {
         let start: u32 = token.parse().unwrap_or(0);
         let size = if size == 0 { 3 } else { size.min(3) };
         let end = (start + size).min(10);
-        let next = if end < 10 { end.to_string() } else { String::new() };
+        let next = if end < 10 {
+            end.to_string()
+        } else {
+            String::new()
+        };
         Ok(((start..end).collect(), next))
     }
 

@@ -84,13 +84,18 @@ async fn policy(args: &PrecheckArgs, context: &mut Context<'_>) -> Result<Policy
         local: None,
     };
     let target = context.target(&connect)?;
-    let info = in_session(target, context, &ResumeNote::default(), async |session, _| {
-        session
-            .server()
-            .get_server_info(asking(GetServerInfoRequest {}))
-            .await
-            .map_err(|status| Failure::service("fetch the policy of the server", status))
-    })
+    let info = in_session(
+        target,
+        context,
+        &ResumeNote::default(),
+        async |session, _| {
+            session
+                .server()
+                .get_server_info(asking(GetServerInfoRequest {}))
+                .await
+                .map_err(|status| Failure::service("fetch the policy of the server", status))
+        },
+    )
     .await?
     .into_inner();
     parse(url, &info.policy_text)
@@ -108,7 +113,10 @@ fn read_policy(path: &Path) -> Result<String, Failure> {
     if metadata.len() > POLICY_BYTES_MAX {
         return Err(Failure::Policy {
             origin: path.display().to_string(),
-            detail: format!("it has {} bytes; at most {POLICY_BYTES_MAX} are read", metadata.len()),
+            detail: format!(
+                "it has {} bytes; at most {POLICY_BYTES_MAX} are read",
+                metadata.len()
+            ),
         });
     }
     std::fs::read_to_string(path).map_err(|error| Failure::file("read", path, error))

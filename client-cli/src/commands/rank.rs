@@ -71,7 +71,10 @@ fn sort_index(args: &RankArgs) -> Result<usize, Failure> {
         .iter()
         .position(|kelvin| (kelvin - wanted).abs() < SAME_TEMPERATURE_K)
         .ok_or_else(|| Failure::Usage {
-            what: format!("--sort-at {} K is not among the temperatures", temperature(wanted)),
+            what: format!(
+                "--sort-at {} K is not among the temperatures",
+                temperature(wanted)
+            ),
             next: "add it to --temperature.".to_owned(),
         })
 }
@@ -79,7 +82,12 @@ fn sort_index(args: &RankArgs) -> Result<usize, Failure> {
 fn of_level(all: Vec<RankTable>, args: &RankArgs) -> Result<Vec<RankTable>, Failure> {
     let levels: Vec<String> = all
         .iter()
-        .map(|table| format!("\"{}\" with constants of \"{}\"", table.energy_level, table.constants_level))
+        .map(|table| {
+            format!(
+                "\"{}\" with constants of \"{}\"",
+                table.energy_level, table.constants_level
+            )
+        })
         .collect();
     let wanted = args.level.as_deref().unwrap_or_default().to_lowercase();
     let tables: Vec<RankTable> = all

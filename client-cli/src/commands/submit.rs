@@ -16,8 +16,8 @@ use crate::exit::Exit;
 use crate::failure::Failure;
 use crate::package_folder::{self, PackageFiles};
 use crate::progress::Bars;
-use crate::render::lists::{Outcome, id_of, summary};
 use crate::render::failure;
+use crate::render::lists::{Outcome, id_of, summary};
 use crate::retry::Pause;
 use crate::upload;
 use crate::waiting;
@@ -31,7 +31,9 @@ pub async fn run(args: SubmitArgs, context: &mut Context<'_>) -> Result<Exit, Fa
     let target = context.target(&args.connect)?;
     let note = ResumeNote::default();
     let resume = format!("tarehouse submit {} …", target.as_arguments());
-    note.set(format!("Nothing was lost: `{resume}` with the same folders goes on from here."));
+    note.set(format!(
+        "Nothing was lost: `{resume}` with the same folders goes on from here."
+    ));
     let outcomes = in_session(target, context, &note, async |session, context| {
         submit_all(session, context, &args, &note).await
     })
@@ -62,7 +64,10 @@ async fn submit_all(
     }
     let limit = args.timeout.map(Duration::from_secs);
     for outcome in &mut outcomes {
-        let Some(submission) = outcome.submission.as_ref().filter(|_| outcome.problems.is_empty())
+        let Some(submission) = outcome
+            .submission
+            .as_ref()
+            .filter(|_| outcome.problems.is_empty())
         else {
             continue;
         };

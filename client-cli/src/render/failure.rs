@@ -154,9 +154,16 @@ mod tests {
             FieldViolation::new("energy.unit", "unknown"),
         ]);
         let mut details = details;
-        details.set_error_info("MANIFEST_INVALID", "tarehouse", std::collections::HashMap::new());
+        details.set_error_info(
+            "MANIFEST_INVALID",
+            "tarehouse",
+            std::collections::HashMap::new(),
+        );
         let status = Status::with_error_details(Code::InvalidArgument, "two violations", details);
-        let text = to_text(&Failure::service("create the submission", status), View::plain(80));
+        let text = to_text(
+            &Failure::service("create the submission", status),
+            View::plain(80),
+        );
         for part in [
             "could not create the submission",
             "two violations (MANIFEST_INVALID)",

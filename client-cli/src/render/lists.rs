@@ -95,7 +95,11 @@ pub fn compounds(all: &[Compound], view: View) -> String {
 /// One submission with all that is known of it.
 pub fn submission(of: &Submission, view: View) -> String {
     let mut page = Page::new(view);
-    page.title(&format!("{} · form {}", clean(&of.compound), clean(&of.form)));
+    page.title(&format!(
+        "{} · form {}",
+        clean(&of.compound),
+        clean(&of.form)
+    ));
     page.labelled(2, "submission", 10, &clean(&of.name));
     page.labelled(2, "state", 10, &words::painted_state(view, of.state()));
     if !of.record.is_empty() {
@@ -104,7 +108,11 @@ pub fn submission(of: &Submission, view: View) -> String {
     for reason in &of.verdict_reasons {
         page.labelled(2, "because", 10, &clean(reason));
     }
-    for array in of.arrays.iter().filter(|array| array.committed_bytes < array.size_bytes) {
+    for array in of
+        .arrays
+        .iter()
+        .filter(|array| array.committed_bytes < array.size_bytes)
+    {
         let text = format!(
             "{}: {} of {}",
             clean(&array.name),
@@ -180,7 +188,9 @@ fn main_reason(outcome: &Outcome) -> String {
             .as_ref()
             .and_then(|submission| submission.verdict_reasons.first())
     });
-    reason.map(|reason| clean(reason).into_owned()).unwrap_or_default()
+    reason
+        .map(|reason| clean(reason).into_owned())
+        .unwrap_or_default()
 }
 
 fn totals(outcomes: &[Outcome]) -> String {
@@ -240,7 +250,12 @@ mod tests {
     fn a_summary_counts_outcomes_and_shows_the_main_reason() {
         let mut outcomes = vec![
             outcome("a", State::Accepted, Exit::Done, ""),
-            outcome("b", State::Held, Exit::Held, "a cluster is possibly physical"),
+            outcome(
+                "b",
+                State::Held,
+                Exit::Held,
+                "a cluster is possibly physical",
+            ),
             outcome("c", State::Held, Exit::Held, "the bracket is wide"),
         ];
         outcomes.push(Outcome {

@@ -16,10 +16,17 @@ pub fn quantity(value: f64) -> String {
 
 /// Decimals that give four significant digits to a number of this size.
 fn decimals_for(size: f64) -> usize {
-    [(1000.0, 0), (100.0, 1), (10.0, 2), (1.0, 3), (0.1, 4), (0.01, 5)]
-        .into_iter()
-        .find(|(from, _)| size >= *from)
-        .map_or(6, |(_, decimals)| decimals)
+    [
+        (1000.0, 0),
+        (100.0, 1),
+        (10.0, 2),
+        (1.0, 3),
+        (0.1, 4),
+        (0.01, 5),
+    ]
+    .into_iter()
+    .find(|(from, _)| size >= *from)
+    .map_or(6, |(_, decimals)| decimals)
 }
 
 fn power_of_ten(value: f64) -> String {

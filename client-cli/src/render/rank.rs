@@ -124,7 +124,12 @@ fn column(rows: &[&RankRow], index: usize) -> Vec<String> {
     let values = |pick: fn(&RankPoint) -> Option<f64>| {
         let numbers: Vec<Option<f64>> = rows
             .iter()
-            .map(|row| row.points.get(index).filter(|point| point.defined).and_then(pick))
+            .map(|row| {
+                row.points
+                    .get(index)
+                    .filter(|point| point.defined)
+                    .and_then(pick)
+            })
             .collect();
         aligned(&numbers, 2)
     };
@@ -167,7 +172,11 @@ fn write_unranked(page: &mut Page, table: &RankTable) {
             clean(&point.exclusion_reason)
         };
         let somewhere = row.points.iter().any(|other| other.defined);
-        let what = if somewhere { "partly ranked" } else { "not ranked" };
+        let what = if somewhere {
+            "partly ranked"
+        } else {
+            "not ranked"
+        };
         page.hanging(
             "  ",
             "    ",
@@ -203,7 +212,11 @@ fn swap_sentence(first: &RankRow, second: &RankRow, colder: f64, warmer: f64) ->
     if before * after >= 0.0 {
         return None;
     }
-    let (riser, sinker) = if after < 0.0 { (second, first) } else { (first, second) };
+    let (riser, sinker) = if after < 0.0 {
+        (second, first)
+    } else {
+        (first, second)
+    };
     let sure = |kelvin| brackets_apart(first, second, kelvin) == Some(true);
     let certainty = if sure(colder) && sure(warmer) {
         "the brackets are apart on both sides"

@@ -1,6 +1,6 @@
 //! A report for people: the verdict with its reasons first, then what needs attention, soft modes, free energies.
 
-use tarehouse_proto::v1::{CrystalFacts, Finding, FreeEnergy, Noise, Report, Severity};
+use tarehouse_proto::v1::{CrystalFacts, Finding, FreeEnergy, Noise, Report, Severity, Verdict};
 
 use super::numbers::{counted, quantity, temperature, with_unit};
 use super::soft_modes;
@@ -68,7 +68,11 @@ pub fn write_verdict(page: &mut Page, report: &Report) {
     let word = words::verdict(verdict).to_uppercase();
     let word = page.view().paint(words::verdict_style(verdict), &word);
     page.gap();
-    page.hanging("", "  ", &format!("{word}. {}", words::verdict_sentence(verdict)));
+    page.hanging(
+        "",
+        "  ",
+        &format!("{word}. {}", words::verdict_sentence(verdict)),
+    );
     for (k, reason) in report.verdict_reasons.iter().enumerate() {
         let first = format!("{:>3}. ", k + 1);
         page.hanging(&first, "     ", &clean(reason));
@@ -76,7 +80,11 @@ pub fn write_verdict(page: &mut Page, report: &Report) {
 }
 
 fn write_findings(page: &mut Page, findings: &[Finding], show_all: bool) {
-    let of = |severity| findings.iter().filter(move |finding| finding.severity() == severity);
+    let of = |severity| {
+        findings
+            .iter()
+            .filter(move |finding| finding.severity() == severity)
+    };
     page.title(&format!(
         "Findings: {}, {}, {}",
         counted(of(Severity::Fail).count(), "fail", "fails"),
@@ -94,14 +102,14 @@ fn write_findings(page: &mut Page, findings: &[Finding], show_all: bool) {
         }
         return;
     }
-    let mut passed: Vec<&str> = of(Severity::Pass).map(|finding| finding.rule.as_str()).collect();
-    passed.dedup();
-    if !passed.is_empty() {
+    let passes = of(Severity::Pass).count();
+    if passes > 0 {
         let pass = page.view().paint(Style::Good, "pass");
+        let checks = counted(passes, "check", "checks");
         page.hanging(
             &format!("  {pass}     "),
             "           ",
-            &format!("{} (--all shows the numbers)", clean(&passed.join(", "))),
+            &format!("{checks} (--all shows each with its number)"),
         );
     }
 }
@@ -141,7 +149,10 @@ fn write_finding(page: &mut Page, finding: &Finding) {
 fn measured_against_limit(finding: &Finding) -> Option<String> {
     let measured = with_unit(finding.measured?, &clean(&finding.unit));
     Some(match finding.limit {
-        Some(limit) => format!("{measured}; limit {}", with_unit(limit, &clean(&finding.unit))),
+        Some(limit) => format!(
+            "{measured}; limit {}",
+            with_unit(limit, &clean(&finding.unit))
+        ),
         None => measured,
     })
 }
@@ -158,7 +169,11 @@ fn shown(report: &Report, show_all: bool) -> Vec<&FreeEnergy> {
         })
         .collect();
     if chosen.is_empty() {
-        report.free_energy.iter().take(TEMPERATURES_SHOWN_K.len()).collect()
+        report
+            .free_energy
+            .iter()
+            .take(TEMPERATURES_SHOWN_K.len())
+            .collect()
     } else {
         chosen
     }
@@ -173,24 +188,23 @@ fn write_free_energy(page: &mut Page, report: &Report, show_all: bool) {
             "Not defined: a crystal with a soft mode that may be physical has no harmonic free energy.",
         );
     } else {
-        free_energy_table(&points).write(page, 2);
+        if report.verdict() == Verdict::Reject {
+            page.paragraph(2, "Of a rejected upload: not to be used.");
+        }
+        free_energy_table(&points, page.view().width.saturating_sub(2)).write(page, 2);
         page.paragraph(
             2,
-            &format!("Zero-point energy {:.3}", report.zero_point_energy_kj_per_mol),
+            &format!(
+                "Zero-point energy {:.3}",
+                report.zero_point_energy_kj_per_mol
+            ),
         );
     }
     page.paragraph(2, LEFT_OUT);
 }
 
-fn free_energy_table(points: &[&FreeEnergy]) -> Table {
-    let mut table = Table::new(&[
-        ("T/K", Kind::Number),
-        ("F", Kind::Number),
-        ("bracket", Kind::Name),
-        ("±", Kind::Number),
-        ("S/(J/mol/K)", Kind::Number),
-        ("C_V/(J/mol/K)", Kind::Number),
-    ]);
+/// The table of free energies, with as many of its columns as `room` has place for; the first three are always there.
+fn free_energy_table(points: &[&FreeEnergy], room: usize) -> Table {
     let column = |value: fn(&FreeEnergy) -> f64, decimals| {
         let values: Vec<Option<f64>> = points
             .iter()
@@ -198,29 +212,77 @@ fn free_energy_table(points: &[&FreeEnergy]) -> Table {
             .collect();
         aligned(&values, decimals)
     };
-    let central = column(|point| point.central_kj_per_mol, 3);
-    let lower = column(|point| point.lower_kj_per_mol, 3);
-    let upper = column(|point| point.upper_kj_per_mol, 3);
-    let half = column(|point| 0.5 * (point.upper_kj_per_mol - point.lower_kj_per_mol), 3);
-    let entropy = column(|point| point.entropy_j_per_mol_k, 2);
-    let heat = column(|point| point.heat_capacity_j_per_mol_k, 2);
-    let cells = central.iter().zip(&lower).zip(&upper).zip(&half).zip(&entropy).zip(&heat);
-    for (point, (((((central, lower), upper), half), entropy), heat)) in points.iter().zip(cells) {
-        let bracket = if point.defined {
-            format!("{lower} … {upper}")
-        } else {
-            "not defined".to_owned()
-        };
-        table.row(vec![
-            temperature(point.temperature_k),
-            central.clone(),
-            bracket,
-            half.clone(),
-            entropy.clone(),
-            heat.clone(),
-        ]);
-    }
-    table
+    let temperatures = points
+        .iter()
+        .map(|point| temperature(point.temperature_k))
+        .collect();
+    let columns = [
+        ("T/K", Kind::Number, temperatures),
+        (
+            "F",
+            Kind::Number,
+            column(|point| point.central_kj_per_mol, 3),
+        ),
+        ("bracket", Kind::Name, brackets(points)),
+        (
+            "±",
+            Kind::Number,
+            column(
+                |point| 0.5 * (point.upper_kj_per_mol - point.lower_kj_per_mol),
+                3,
+            ),
+        ),
+        (
+            "S/(J/mol/K)",
+            Kind::Number,
+            column(|point| point.entropy_j_per_mol_k, 2),
+        ),
+        (
+            "C_V/(J/mol/K)",
+            Kind::Number,
+            column(|point| point.heat_capacity_j_per_mol_k, 2),
+        ),
+    ];
+    let first_columns = |count: usize| {
+        let columns = &columns[..count.min(columns.len())];
+        let heads: Vec<(&str, Kind)> = columns
+            .iter()
+            .map(|(head, kind, _)| (*head, *kind))
+            .collect();
+        let mut table = Table::new(&heads);
+        for row in 0..points.len() {
+            let cells = columns
+                .iter()
+                .filter_map(|(_, _, cells)| cells.get(row).cloned());
+            table.row(cells.collect());
+        }
+        table
+    };
+    (4..=columns.len())
+        .rev()
+        .map(first_columns)
+        .find(|table| table.natural_width() <= room)
+        .unwrap_or_else(|| first_columns(3))
+}
+
+fn brackets(points: &[&FreeEnergy]) -> Vec<String> {
+    let end = |value: fn(&FreeEnergy) -> f64| {
+        let values: Vec<Option<f64>> = points.iter().map(|point| Some(value(point))).collect();
+        aligned(&values, 3)
+    };
+    let lower = end(|point| point.lower_kj_per_mol);
+    let upper = end(|point| point.upper_kj_per_mol);
+    points
+        .iter()
+        .zip(lower.iter().zip(&upper))
+        .map(|(point, (lower, upper))| {
+            if point.defined {
+                format!("{lower} … {upper}")
+            } else {
+                "not defined".to_owned()
+            }
+        })
+        .collect()
 }
 
 fn write_facts(page: &mut Page, report: &Report) {
@@ -247,7 +309,12 @@ fn write_facts(page: &mut Page, report: &Report) {
         );
         page.labelled(2, "mesh", LABEL, &text);
     }
-    page.labelled(2, "program", LABEL, &format!("tarehouse {}", clean(&report.program_version)));
+    page.labelled(
+        2,
+        "program",
+        LABEL,
+        &format!("tarehouse {}", clean(&report.program_version)),
+    );
     page.labelled(2, "policy", LABEL, &clean(&report.policy_digest));
     page.labelled(2, "package", LABEL, &clean(&report.package_digest));
 }
@@ -274,7 +341,10 @@ fn packing(crystal: &CrystalFacts) -> String {
 }
 
 fn sound(crystal: &CrystalFacts) -> String {
-    match (crystal.sound_velocity_min_m_per_s, crystal.sound_velocity_max_m_per_s) {
+    match (
+        crystal.sound_velocity_min_m_per_s,
+        crystal.sound_velocity_max_m_per_s,
+    ) {
         (Some(slowest), Some(fastest)) => format!("{slowest:.0} to {fastest:.0} m/s"),
         _ => "not defined: the long-wave limit is unstable".to_owned(),
     }
@@ -296,10 +366,16 @@ fn projection(crystal: &CrystalFacts) -> String {
 
 fn noise_text(noise: &Noise) -> String {
     let relation = if noise.bound_only { "at most " } else { "" };
-    let mut text = format!("{relation}{} eV/Å² per constant", quantity(noise.sigma_ev_per_ang2));
+    let mut text = format!(
+        "{relation}{} eV/Å² per constant",
+        quantity(noise.sigma_ev_per_ang2)
+    );
     let mut remarks = Vec::new();
     if !noise.erased.is_empty() {
-        remarks.push(format!("evidence erased: {}", clean(&noise.erased.join(", "))));
+        remarks.push(format!(
+            "evidence erased: {}",
+            clean(&noise.erased.join(", "))
+        ));
     }
     for (flag, words) in [
         (noise.truncated, "cut off at a distance"),

@@ -1,6 +1,6 @@
 //! Clusters of soft modes with their tags and the evidence for them.
 
-use tarehouse_proto::v1::SoftMode;
+use tarehouse_proto::v1::{SoftMode, SoftModeTag, TruncationChange};
 
 use super::numbers::{counted, quantity, wave_vector, wavenumber};
 use super::text::{Page, Style, clean};
@@ -19,7 +19,11 @@ pub fn write(page: &mut Page, clusters: &[SoftMode], show_all: bool) {
         "Soft modes: {}",
         counted(clusters.len(), "cluster", "clusters")
     ));
-    let shown = if show_all { clusters.len() } else { CLUSTERS_SHOWN };
+    let shown = if show_all {
+        clusters.len()
+    } else {
+        CLUSTERS_SHOWN
+    };
     for cluster in clusters.iter().take(shown) {
         write_cluster(page, cluster);
     }
@@ -32,8 +36,8 @@ pub fn write(page: &mut Page, clusters: &[SoftMode], show_all: bool) {
 fn write_cluster(page: &mut Page, cluster: &SoftMode) {
     let view = page.view();
     let style = match cluster.tag() {
-        tarehouse_proto::v1::SoftModeTag::PossiblyPhysical => Style::Care,
-        _ => Style::Quiet,
+        SoftModeTag::PossiblyPhysical => Style::Care,
+        SoftModeTag::Numerical | SoftModeTag::Unspecified => Style::Quiet,
     };
     let tag = view.paint(style, words::tag(cluster.tag()));
     page.hanging(
@@ -96,17 +100,18 @@ fn evidence(cluster: &SoftMode) -> String {
     parts.join("; ")
 }
 
+/// The lowest wavenumber after dropping small constants, one entry per fraction.
 fn truncation(cluster: &SoftMode) -> String {
-    let parts: Vec<String> = cluster
-        .truncation_changes
-        .iter()
-        .map(|change| {
-            format!(
-                "{} without constants below {} of the largest",
-                wavenumber(change.wavenumber_per_cm),
-                quantity(change.fraction)
-            )
-        })
-        .collect();
-    parts.join("; ")
+    if cluster.truncation_changes.is_empty() {
+        return String::new();
+    }
+    let joined = |part: fn(&TruncationChange) -> String| {
+        let parts: Vec<String> = cluster.truncation_changes.iter().map(part).collect();
+        parts.join(", ")
+    };
+    format!(
+        "{} cm⁻¹ without constants below {} of the largest",
+        joined(|change| wavenumber(change.wavenumber_per_cm)),
+        joined(|change| format!("{:e}", change.fraction)),
+    )
 }

@@ -197,7 +197,11 @@ mod tests {
             ("reason", Kind::Words),
             ("kJ/mol", Kind::Number),
         ]);
-        table.row(vec!["I".into(), "a reason of several words".into(), "1.00".into()]);
+        table.row(vec![
+            "I".into(),
+            "a reason of several words".into(),
+            "1.00".into(),
+        ]);
         table.row(vec!["II".into(), "short".into(), "-12.50".into()]);
         table
     }
@@ -224,7 +228,10 @@ mod tests {
     #[test]
     fn what_cannot_be_squeezed_is_stacked() {
         let mut table = Table::new(&[("record", Kind::Name), ("form", Kind::Name)]);
-        table.row(vec!["records/0123456789abcdef0123456789abcdef".into(), "II".into()]);
+        table.row(vec![
+            "records/0123456789abcdef0123456789abcdef".into(),
+            "II".into(),
+        ]);
         let text = table.to_text(View::plain(40));
         assert!(text.lines().all(|line| visible_width(line) <= 40));
         assert!(text.contains("form   II"));

@@ -1,6 +1,8 @@
 //! The words that stand for the contract's names.
 
-use tarehouse_proto::v1::{CellProtocol, LikelyCause, Severity, SoftModeTag, State, Strength, Verdict};
+use tarehouse_proto::v1::{
+    CellProtocol, LikelyCause, Severity, SoftModeTag, State, Strength, Verdict,
+};
 
 use super::text::{Style, View};
 
@@ -104,16 +106,22 @@ pub fn likely_cause(cause: LikelyCause) -> Option<&'static str> {
             "the order of the two atom indices, or the sign of the translations, is swapped"
         }
         LikelyCause::PermutedAxes => "the Cartesian axes of structure and constants differ",
-        LikelyCause::PermutedAtoms => "the order of the atoms differs between structure and constants",
+        LikelyCause::PermutedAtoms => {
+            "the order of the atoms differs between structure and constants"
+        }
         LikelyCause::WrongMasses => "the masses do not belong to the elements",
         LikelyCause::SignError => "the constants have the wrong sign",
         LikelyCause::ZeroedBlock => "a block of the constants was set to zero",
         LikelyCause::DuplicatedBlock => "a block of the constants stands twice",
-        LikelyCause::WrongSupercell => "the supercell or its translations are not those of the constants",
+        LikelyCause::WrongSupercell => {
+            "the supercell or its translations are not those of the constants"
+        }
         LikelyCause::WrongStructure => "the structure is not that of the constants",
         LikelyCause::ScfNoise => "noise of a loosely converged electronic structure",
         LikelyCause::RoundedForces => "forces were written with too few decimals",
-        LikelyCause::DifferenceTruncation => "the displacements are too long for the difference quotient",
+        LikelyCause::DifferenceTruncation => {
+            "the displacements are too long for the difference quotient"
+        }
         LikelyCause::SmallSupercell => "the supercell is too small",
         LikelyCause::UnrelaxedGeometry => "the geometry was not fully relaxed",
         LikelyCause::EvidenceErased => "conditions were enforced before submission",
