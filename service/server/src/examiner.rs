@@ -2,6 +2,7 @@
 
 use tarehouse_assay::report::Report;
 use tarehouse_assay::{ExamineError, Policy, Progress, Submission};
+use tarehouse_physics::ForceConstants;
 
 /// Judges decoded packages. Called on blocking threads, several at a time.
 pub trait Examiner: Send + Sync + 'static {
@@ -15,6 +16,9 @@ pub trait Examiner: Send + Sync + 'static {
         policy: &Policy,
         progress: &dyn Progress,
     ) -> Result<Report, ExamineError>;
+
+    /// The constants that frequencies are made from.
+    fn projected_constants(&self, submission: &Submission, policy: &Policy) -> ForceConstants;
 }
 
 /// The examination of the house.
@@ -29,5 +33,9 @@ impl Examiner for Assay {
         progress: &dyn Progress,
     ) -> Result<Report, ExamineError> {
         tarehouse_assay::examine(submission, policy, progress)
+    }
+
+    fn projected_constants(&self, submission: &Submission, policy: &Policy) -> ForceConstants {
+        tarehouse_assay::projected_constants(submission, policy)
     }
 }

@@ -10,6 +10,7 @@ use tarehouse_assay::report::{
 };
 use tarehouse_assay::submission::Digest;
 use tarehouse_assay::{Policy, Progress, Submission};
+use tarehouse_physics::ForceConstants;
 use tarehouse_proto::{package, v1};
 use tarehouse_store::{Outcome, RecordSummary, Store, StoreError, SubmissionId};
 
@@ -66,19 +67,38 @@ pub(crate) fn attempt(
     catch_unwind(AssertUnwindSafe(|| {
         let submission = decode(store, id)?;
         let report = examiner.examine(&submission, policy, progress)?;
+        let projected = wants_projected(report.verdict).then(|| {
+            progress.advance("project", 0, 1);
+            array_file(&examiner.projected_constants(&submission, policy))
+        });
         progress.advance("store", 0, 1);
-        Ok(outcome(&submission, report))
+        Ok(outcome(&submission, report, projected))
     }))
     .unwrap_or_else(|payload| Err(Crash::Panic(panic_text(payload.as_ref()))))
 }
 
+/// Projected constants are kept of what is, or may come, into the catalogue.
+fn wants_projected(verdict: Verdict) -> bool {
+    match verdict {
+        Verdict::Accept | Verdict::Hold => true,
+        Verdict::Reject => false,
+    }
+}
+
+/// Constants as an array file: eV/Å², displaced atom first, shape (L, n, 3, n, 3).
+fn array_file(constants: &ForceConstants) -> Vec<u8> {
+    let cells = constants.supercell().cell_count() as u64;
+    let atoms = constants.atom_count() as u64;
+    package::npy::write(&[cells, atoms, 3, atoms, 3], &constants.to_array())
+}
+
 /// What an examination hands to the store.
-fn outcome(submission: &Submission, report: Report) -> Outcome {
+fn outcome(submission: &Submission, report: Report, projected: Option<Vec<u8>>) -> Outcome {
     let verdict = report.verdict;
     let summary = (verdict == Verdict::Accept).then(|| summary(submission, &report));
     Outcome {
         report: v1::Report::from(report).encode_to_vec(),
-        projected: None,
+        projected,
         verdict,
         summary,
     }

@@ -185,6 +185,11 @@ pub(crate) fn panic_text(payload: &(dyn Any + Send)) -> String {
 
 #[cfg(test)]
 mod tests {
+    use std::convert::Infallible;
+
+    use tower::ServiceExt as _;
+    use tower_http::catch_panic::CatchPanicLayer;
+
     use super::*;
 
     #[test]
@@ -200,5 +205,72 @@ mod tests {
         );
         assert_eq!(of("CatalogService/RankForms"), Some(config.read_deadline));
         assert_eq!(deadlines.of_method("/grpc.health.v1.Health/Watch"), None);
+    }
+
+    fn short() -> Deadlines {
+        let (brief, long) = (Duration::from_millis(20), Duration::from_secs(60));
+        Deadlines {
+            read: brief,
+            write: long,
+            seal: long,
+        }
+    }
+
+    async fn call<F>(path: &str, handler: fn(Request<Body>) -> F) -> Response<impl Sized>
+    where
+        F: Future<Output = Result<Response<Body>, Infallible>> + Send + 'static,
+    {
+        let gated = Gate(short()).layer(tower::service_fn(handler));
+        let caught = CatchPanicLayer::custom(panicked).layer(gated);
+        let request = Request::builder().uri(path).body(Body::empty()).unwrap();
+        caught.oneshot(request).await.unwrap()
+    }
+
+    fn code<B>(answer: &Response<B>) -> Option<Code> {
+        answer
+            .headers()
+            .get("grpc-status")
+            .map(|value| Code::from_bytes(value.as_bytes()))
+    }
+
+    #[tokio::test]
+    async fn a_method_out_of_time_is_answered_and_a_stream_is_not_timed() {
+        let never = |_| std::future::pending();
+        let answer = call("/tarehouse.v1.CatalogService/GetRecord", never).await;
+        assert_eq!(code(&answer), Some(Code::DeadlineExceeded));
+        let watch = call("/tarehouse.v1.SubmissionService/WatchSubmission", never);
+        assert!(tokio::time::timeout(4 * short().read, watch).await.is_err());
+    }
+
+    #[tokio::test]
+    async fn a_panic_is_answered_with_internal_and_without_its_words() {
+        let answer = call("/tarehouse.v1.CatalogService/GetRecord", |_| async {
+            panic!("the secret {}", 7)
+        })
+        .await;
+        assert_eq!(code(&answer), Some(Code::Internal));
+        let words = answer
+            .headers()
+            .get("grpc-message")
+            .unwrap()
+            .to_str()
+            .unwrap();
+        assert!(!words.contains("secret"), "{words}");
+    }
+
+    #[tokio::test]
+    async fn the_principal_is_named_and_oversize_is_an_invalid_argument() {
+        let answer = call(
+            "/tarehouse.v1.CatalogService/GetRecord",
+            |request| async move {
+                assert_eq!(
+                    request.extensions().get(),
+                    Some(&Principal("local".to_owned()))
+                );
+                Ok(Status::out_of_range("decoded message length too large").into_http())
+            },
+        )
+        .await;
+        assert_eq!(code(&answer), Some(Code::InvalidArgument));
     }
 }
