@@ -1,8 +1,8 @@
 //! Packages of an invented scenario, and the small library that makes them.
 //!
 //! The way through it: a [`Compound`] (one molecule and its invented potential) is packed into a [`MolecularCrystal`],
-//! [`relax`]ed, differentiated into [`RealSpaceConstants`], folded into a supercell, perhaps disturbed by [`noise`], and
-//! written as a [`Package`].
+//! [`relax`]ed, differentiated into [`RealSpaceConstants`], folded into a supercell, perhaps disturbed by [`noise`],
+//! described in a [`Contribution`], and sealed as a submission with its [`Package`].
 //!
 //! The potential is a sum of functions of interatomic distance, cut off smoothly. It is therefore exactly invariant
 //! under translation and rotation, its derivatives are analytic, and its constants have a finite range, so that the
@@ -27,7 +27,11 @@ pub mod folded;
 
 pub mod harmonic;
 
+pub mod runs;
+
 pub mod noise;
+
+pub mod contribution;
 
 pub mod package;
 
@@ -41,6 +45,7 @@ pub mod scenario;
 
 pub use compound::Compound;
 pub use constants::RealSpaceConstants;
+pub use contribution::Contribution;
 pub use molecular_crystal::MolecularCrystal;
 pub use package::Package;
 pub use relax::relax;

@@ -268,3 +268,28 @@ fn quoted(text: &str) -> String {
     result.push('"');
     result
 }
+
+#[cfg(test)]
+mod tests {
+    use super::{number, quoted};
+
+    #[test]
+    fn strings_and_numbers_come_back() {
+        for text in [
+            "plain",
+            "a \"quoted\" \\ word",
+            "two\nlines\tand a \u{1} control",
+            "β-form",
+        ] {
+            let table: toml::Table = format!("x = {}", quoted(text)).parse().unwrap();
+            assert_eq!(table["x"].as_str(), Some(text));
+        }
+        for value in [0.0, 1.0, -0.1, 1e-300, 6.02e23, 1.0 / 3.0] {
+            let table: toml::Table = format!("x = {}", number(value)).parse().unwrap();
+            assert_eq!(
+                table["x"].as_float().map(f64::to_bits),
+                Some(value.to_bits())
+            );
+        }
+    }
+}

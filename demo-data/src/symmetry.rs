@@ -186,7 +186,7 @@ impl AtomMap {
             let found = positions.iter().enumerate().find_map(|(k, other)| {
                 let gap = image - other;
                 let near = gap.iter().all(|x| (x - x.round()).abs() < SAME_SITE);
-                near.then(|| (k, gap))
+                near.then_some((k, gap))
             });
             let Some((target, gap)) = found else {
                 return Err(ModelError::NotSymmetric {

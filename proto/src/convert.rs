@@ -4,7 +4,9 @@
 mod names;
 mod report;
 
-pub use names::{digest_from_hex, digest_to_hex, likely_cause_names, rule_by_name, rule_names};
+pub use names::{
+    digest_from_hex, digest_to_hex, likely_cause_names, limits_message, rule_by_name, rule_names,
+};
 
 /// Why a message is not what the contract promises.
 #[derive(Debug, Clone, PartialEq, Eq, thiserror::Error)]

@@ -4,6 +4,7 @@ use nalgebra::{Matrix3, Vector3};
 use tarehouse_demo_data::constants::RealSpaceConstants;
 use tarehouse_demo_data::folded::Interpolation;
 use tarehouse_demo_data::forms;
+use tarehouse_demo_data::runs::{central_differences, central_runs, forces};
 use tarehouse_eigensolver::c64;
 use tarehouse_physics::Supercell;
 
@@ -46,6 +47,29 @@ fn folded_constants_are_differences_of_forces_in_the_supercell() {
             }
         }
     }
+}
+
+#[test]
+fn finite_displacements_err_by_the_square_of_their_length() {
+    let crystal = forms::PELQUONOL_BETA.crystal().unwrap();
+    let n = crystal.atom_count();
+    let cells = supercell([[1, 0, 0], [0, 2, 0], [0, 0, 1]]);
+    let exact = RealSpaceConstants::of(&crystal)
+        .unwrap()
+        .folded(&cells)
+        .unwrap();
+    let error = |h: f64| {
+        let runs = forces(&crystal, &cells, &central_runs(n, h)).unwrap();
+        let found = central_differences(&cells, n, h, &runs).unwrap();
+        let pairs = found.blocks().iter().zip(exact.blocks());
+        pairs.map(|(a, b)| (a - b).amax()).fold(0.0, f64::max)
+    };
+    let (coarse, fine) = (error(0.02), error(0.01));
+    assert!((coarse / fine - 4.0).abs() < 0.1, "{coarse} {fine}");
+    assert!(fine < 0.05 && fine > 1e-4);
+    let rest = forces(&crystal, &cells, &central_runs(n, 0.0)[..1]).unwrap();
+    assert!(rest[0].iter().all(|f| f.amax() < 1e-10));
+    assert!(central_differences(&cells, n, 0.01, &rest).is_err());
 }
 
 #[test]

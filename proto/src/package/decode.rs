@@ -9,6 +9,7 @@ use tarehouse_physics::ForceConstants;
 use tarehouse_physics::force_constants::ForceConstantsError;
 
 use super::manifest::{self, ArrayRole, Manifest, NamedArray, Parsed};
+use super::reader::shortened;
 use super::violation::Violations;
 use super::{ArrayIdentity, MANIFEST_FILE, npy, package_digest};
 use crate::limits;
@@ -55,9 +56,9 @@ fn check_names(parsed: &mut Parsed, arrays: &[(&str, &[u8])]) {
     for (name, _) in arrays {
         let known = named.iter().any(|expected| expected.name == *name);
         if !seen.insert(*name) {
-            violations.add(name, "", "the file stands twice");
+            violations.add(&shortened(name), "", "the file stands twice");
         } else if parsed.names_complete && !known {
-            violations.add(name, "", "the manifest names no such array");
+            violations.add(&shortened(name), "", "the manifest names no such array");
         }
     }
     for expected in named {

@@ -24,6 +24,7 @@ pub(crate) struct NoiseModel {
     /// For the report.
     pub(crate) summary: Noise,
     seed: Digest,
+    pattern: Pattern,
 }
 
 /// Residual of one family in the upload and in unit noise.
@@ -77,9 +78,18 @@ impl NoiseModel {
         let declared = submission.declaration.displaced == Displaced::Inequivalent;
         let symmetry_expanded =
             group_erased && (declared || (live(PAIR_SYMMETRY) && live(TRANSLATION_SUM)));
+        let quantum = quantum(constants);
+        let self_coherence = self_coherence(constants, &white).map(|measured| match quantum {
+            Some(_) => measured.max(rounding_coherence(constants)),
+            None => measured,
+        });
+        let pattern = Pattern {
+            symmetry_expanded,
+            self_coherence,
+        };
         let remeasured;
-        let heard = if symmetry_expanded {
-            remeasured = measure_families(constants, &expanded(&white, group), group);
+        let heard = if symmetry_expanded || self_coherence.is_some() {
+            remeasured = measure_families(constants, &pattern.applied_to(white, group), group);
             &remeasured
         } else {
             &families
@@ -92,16 +102,23 @@ impl NoiseModel {
                 Some(largest.map_or(s, |l| l.max(s)))
             });
         let truncated = live(TRANSLATION_SUM) && !live(PAIR_SYMMETRY) && !live(SPACE_GROUP);
+        // Whatever the asymmetry shows: small constants that round to zero on both sides hide their error.
+        let rounding = quantum.map_or(0.0, |q| q / 12.0_f64.sqrt());
+        let sigma = direct.unwrap_or_else(|| farthest_rms(constants, crystal, images));
         let summary = Noise {
-            sigma_ev_per_ang2: direct.unwrap_or_else(|| farthest_rms(constants, crystal, images)),
+            sigma_ev_per_ang2: sigma.max(rounding),
             bound_only: direct.is_none(),
             erased,
             truncated,
-            self_fixed: is_self_fixed(constants, &white),
+            self_fixed: self_coherence.is_some(),
             symmetry_expanded,
-            rounded: quantum(constants).is_some(),
+            rounded: quantum.is_some(),
         };
-        Self { summary, seed }
+        Self {
+            summary,
+            seed,
+            pattern,
+        }
     }
 
     /// One draw of the noise that is left after projection, eV/Å². The same index gives the same draw.
@@ -112,13 +129,8 @@ impl NoiseModel {
         group: &SpaceGroup,
     ) -> ForceConstants {
         let mut rng = stream(&self.seed, FIRST_DRAW_STREAM + index);
-        let mut noise = white_noise(constants, &mut rng);
-        if self.summary.symmetry_expanded {
-            noise = expanded(&noise, group);
-        }
-        if self.summary.self_fixed {
-            noise = with_self_fixed(&noise);
-        }
+        let white = white_noise(constants, &mut rng);
+        let noise = self.pattern.applied_to(white, group);
         scaled(&projected(&noise, group), self.summary.sigma_ev_per_ang2)
     }
 }
@@ -176,6 +188,30 @@ fn significant(from: &ForceConstants, to: &ForceConstants) -> bool {
     distance(from, to) > ROUNDING * rms(from) * (9.0 * from.blocks().len() as f64).sqrt()
 }
 
+/// How the errors of an upload hang together.
+#[derive(Debug, Clone, Copy, PartialEq)]
+struct Pattern {
+    /// Only one atom of each orbit was displaced.
+    symmetry_expanded: bool,
+    /// Self blocks were set to minus the row sum, and errors of a row add up by this factor more than independent ones.
+    self_coherence: Option<f64>,
+}
+
+impl Pattern {
+    /// White noise brought into this pattern.
+    fn applied_to(self, white: ForceConstants, group: &SpaceGroup) -> ForceConstants {
+        let noise = if self.symmetry_expanded {
+            expanded(&white, group)
+        } else {
+            white
+        };
+        match self.self_coherence {
+            Some(factor) => with_self_fixed(&noise, factor),
+            None => noise,
+        }
+    }
+}
+
 /// Noise of an upload in which only one atom of each orbit was displaced: rows of the representatives carried to the
 /// others by the group. Averaging over the group does not reduce it further.
 fn expanded(noise: &ForceConstants, group: &SpaceGroup) -> ForceConstants {
@@ -197,8 +233,8 @@ fn expanded(noise: &ForceConstants, group: &SpaceGroup) -> ForceConstants {
     space_group_symmetric(&rows, group)
 }
 
-/// Noise of an upload whose self blocks were set to minus the sum of the row.
-fn with_self_fixed(noise: &ForceConstants) -> ForceConstants {
+/// Noise of an upload whose self blocks were set to minus the sum of the row, times `coherence`.
+fn with_self_fixed(noise: &ForceConstants, coherence: f64) -> ForceConstants {
     let (home, n) = (noise.home_cell(), noise.atom_count());
     let mut rows = vec![Matrix3::zeros(); n];
     for (flat, block) in noise.blocks().iter().enumerate() {
@@ -209,7 +245,7 @@ fn with_self_fixed(noise: &ForceConstants) -> ForceConstants {
     }
     map_blocks(noise, |(l, i, j), block| {
         if l == home && i == j {
-            -rows[i]
+            rows[i] * -coherence
         } else {
             *block
         }
@@ -217,17 +253,21 @@ fn with_self_fixed(noise: &ForceConstants) -> ForceConstants {
 }
 
 /// Self-fixed uploads: the asymmetry of the self blocks is far larger than that of the pairs, as the sum of a whole row of
-/// errors sits in them, while the sum over the row vanishes.
-fn is_self_fixed(constants: &ForceConstants, white: &ForceConstants) -> bool {
-    let upload = self_to_pair_residual(constants);
-    let free = self_to_pair_residual(white);
-    let fixed = self_to_pair_residual(&with_self_fixed(white));
-    match (upload, free, fixed) {
-        (Some(r), Some(r_white), Some(r_fixed)) => {
-            r_fixed > 2.0 * r_white && r > (r_white * r_fixed).sqrt()
-        }
-        _ => false,
-    }
+/// errors sits in them. Where it is larger still than for independent errors (rounding adds coherently), the excess is
+/// the factor returned; at least one.
+fn self_coherence(constants: &ForceConstants, white: &ForceConstants) -> Option<f64> {
+    let upload = self_to_pair_residual(constants)?;
+    let free = self_to_pair_residual(white)?;
+    let fixed = self_to_pair_residual(&with_self_fixed(white, 1.0))?;
+    let is_fixed = fixed > 2.0 * free && upload > (free * fixed).sqrt();
+    is_fixed.then(|| (upload / fixed).max(1.0))
+}
+
+/// The sum of a row of N rounding errors q/4 of one sign, over that of N independent errors of q/√12: √(3N/4). Forces on
+/// atoms far from the displaced one round to zero all from the same side.
+fn rounding_coherence(constants: &ForceConstants) -> f64 {
+    let pairs = constants.supercell().cell_count() * constants.atom_count();
+    (0.75 * pairs as f64).sqrt()
 }
 
 /// rms asymmetry of the self blocks over that of the pairs.

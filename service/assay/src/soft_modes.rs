@@ -11,7 +11,8 @@ use tarehouse_physics::units::wavenumber_per_cm;
 use crate::ExamineError;
 use crate::noise::map_blocks;
 use crate::report::{SoftMode, Strength, Tag, TruncationChange};
-use crate::workup::{PointSpectrum, SoftBranch, Workup, eigen_error, lowest_wavenumber, show_q};
+use crate::spectra::{PointSpectrum, UncertainBranch};
+use crate::workup::{Workup, eigen_error, lowest_wavenumber, show_q};
 
 /// Points of one cluster, as places in the reduced mesh.
 type Cluster = Vec<usize>;
@@ -33,7 +34,10 @@ pub(crate) fn soft_modes(
     for cluster in clusters(&neighbours, spectra.len(), is_soft) {
         modes.push(tagged(workup, spectra, &truncated, &cluster)?);
     }
-    modes.sort_by(|a, b| a.lowest_wavenumber_per_cm.total_cmp(&b.lowest_wavenumber_per_cm));
+    modes.sort_by(|a, b| {
+        a.lowest_wavenumber_per_cm
+            .total_cmp(&b.lowest_wavenumber_per_cm)
+    });
     let below = workup.soft_below();
     let raw_is_soft = |point: usize| spectra[point].raw.first().is_some_and(|x| *x < below);
     for cluster in clusters(&neighbours, spectra.len(), raw_is_soft) {
@@ -50,23 +54,29 @@ fn tagged(
     truncated: &[(f64, Dynamics)],
     cluster: &Cluster,
 ) -> Result<SoftMode, ExamineError> {
-    let value = |point: usize, branch: &SoftBranch| spectra[point].eigenvalues[branch.branch];
-    let all = || cluster.iter().flat_map(|p| spectra[*p].soft.iter().map(move |b| (*p, b)));
+    let value = |point: usize, branch: &UncertainBranch| spectra[point].eigenvalues[branch.branch];
+    let all = || {
+        cluster
+            .iter()
+            .flat_map(|p| spectra[*p].soft.iter().map(move |b| (*p, b)))
+    };
     let lowest = all().min_by(|a, b| value(a.0, a.1).total_cmp(&value(b.0, b.1)));
     let Some((point, branch)) = lowest else {
         return vanished(workup, spectra, cluster);
     };
-    let z = |point: usize, b: &SoftBranch| (value(point, b) - b.null_mean.min(0.0)) / b.spread;
-    let significant =
-        if workup.noise.summary.rounded { SIGNIFICANT_Z_ROUNDED } else { SIGNIFICANT_Z };
+    let z = |point: usize, b: &UncertainBranch| (value(point, b) - b.null_mean.min(0.0)) / b.spread;
+    let significant = if workup.noise.summary.rounded {
+        SIGNIFICANT_Z_ROUNDED
+    } else {
+        SIGNIFICANT_Z
+    };
     let commensurate_point = |p: usize| workup.mesh.points()[p].commensurate;
     let sampled = all()
         .filter(|(p, _)| commensurate_point(*p))
         .min_by(|a, b| z(a.0, a.1).total_cmp(&z(b.0, b.1)));
     let beyond_noise = all().any(|(p, b)| z(p, b) < -significant);
-    let beyond_alias = all().any(|(p, b)| {
-        value(p, b) - b.null_mean.min(0.0) < -(significant * b.spread + b.alias)
-    });
+    let beyond_alias = all()
+        .any(|(p, b)| value(p, b) - b.null_mean.min(0.0) < -(significant * b.spread + b.alias));
     let (tag, strength, reason) = match sampled {
         Some((p, b)) if z(p, b) < -significant => (
             Tag::PossiblyPhysical,
@@ -106,7 +116,9 @@ fn tagged(
     };
     let q = workup.mesh.points()[point].q;
     let eigenvalue = value(point, branch);
-    let separation = (eigenvalue - branch.null_mean.min(0.0)).abs().max(f64::MIN_POSITIVE);
+    let separation = (eigenvalue - branch.null_mean.min(0.0))
+        .abs()
+        .max(f64::MIN_POSITIVE);
     Ok(SoftMode {
         tag,
         strength,
@@ -114,7 +126,9 @@ fn tagged(
         raw_wavenumber_per_cm: lowest_wavenumber(&spectra[point].raw),
         q: q.into(),
         point_count: point_count(&workup.mesh, cluster),
-        commensurate: cluster.iter().any(|p| commensurate_point(*p) && !spectra[*p].soft.is_empty()),
+        commensurate: cluster
+            .iter()
+            .any(|p| commensurate_point(*p) && !spectra[*p].soft.is_empty()),
         z: Some(z(point, branch)),
         alias_share: Some(branch.alias / separation),
         external_fraction: spectra[point].external[branch.branch],
@@ -133,9 +147,16 @@ fn vanished(
     cluster: &Cluster,
 ) -> Result<SoftMode, ExamineError> {
     let raw = |p: usize| spectra[p].raw.first().copied().unwrap_or(f64::INFINITY);
-    let point = cluster.iter().copied().min_by(|a, b| raw(*a).total_cmp(&raw(*b))).unwrap_or(0);
+    let point = cluster
+        .iter()
+        .copied()
+        .min_by(|a, b| raw(*a).total_cmp(&raw(*b)))
+        .unwrap_or(0);
     let q = workup.mesh.points()[point].q;
-    let modes = workup.raw_dynamics.modes(&q).map_err(eigen_error("raw soft modes"))?;
+    let modes = workup
+        .raw_dynamics
+        .modes(&q)
+        .map_err(eigen_error("raw soft modes"))?;
     let vector = modes.vector(0);
     Ok(SoftMode {
         tag: Tag::Numerical,
@@ -159,20 +180,30 @@ fn vanished(
 
 /// Participation number Σ|e_i|²)² / Σ|e_i|⁴ over the number of atoms: 1 where all atoms move alike.
 fn participation(vector: &[tarehouse_physics::c64]) -> f64 {
-    let shares: Vec<f64> =
-        vector.chunks(3).map(|e| e.iter().map(|z| z.norm_sqr()).sum()).collect();
+    let shares: Vec<f64> = vector
+        .chunks(3)
+        .map(|e| e.iter().map(|z| z.norm_sqr()).sum())
+        .collect();
     let sum: f64 = shares.iter().sum();
     let squares: f64 = shares.iter().map(|x| x * x).sum();
     sum * sum / (squares * shares.len() as f64)
 }
 
 fn point_count(mesh: &QMesh, cluster: &Cluster) -> u32 {
-    cluster.iter().map(|p| mesh.points()[*p].multiplicity.max(1)).sum()
+    cluster
+        .iter()
+        .map(|p| mesh.points()[*p].multiplicity.max(1))
+        .sum()
 }
 
 /// The constants with those below each of the policy's fractions of the largest dropped, sums restored.
 pub(crate) fn truncated_dynamics(workup: &Workup<'_>) -> Vec<(f64, Dynamics)> {
-    let largest = workup.projected.blocks().iter().map(nalgebra::Matrix3::amax).fold(0.0, f64::max);
+    let largest = workup
+        .projected
+        .blocks()
+        .iter()
+        .map(nalgebra::Matrix3::amax)
+        .fold(0.0, f64::max);
     let truncate = |fraction: f64| {
         let least = fraction * largest;
         let kept = map_blocks(&workup.projected, |_, block| {
@@ -181,7 +212,13 @@ pub(crate) fn truncated_dynamics(workup: &Workup<'_>) -> Vec<(f64, Dynamics)> {
         let restored = tarehouse_physics::projection::projected(&kept, &workup.group);
         workup.dynamics_of(&restored)
     };
-    workup.limits.reach.truncation_fractions.iter().map(|f| (*f, truncate(*f))).collect()
+    workup
+        .limits
+        .reach
+        .truncation_fractions
+        .iter()
+        .map(|f| (*f, truncate(*f)))
+        .collect()
 }
 
 fn truncation_changes(
@@ -192,7 +229,9 @@ fn truncation_changes(
     truncated
         .iter()
         .map(|(fraction, dynamics)| {
-            let values = dynamics.eigenvalues(q).map_err(eigen_error("truncated constants"))?;
+            let values = dynamics
+                .eigenvalues(q)
+                .map_err(eigen_error("truncated constants"))?;
             let value = values.get(branch).copied().unwrap_or_default();
             Ok(TruncationChange {
                 fraction: *fraction,
@@ -216,7 +255,9 @@ fn neighbours(mesh: &QMesh) -> Vec<Vec<usize>> {
             lists[b].push(a);
         }
     };
-    let steps: Vec<[i64; 3]> = (0..27_i64).map(|k| [k / 9 - 1, k / 3 % 3 - 1, k % 3 - 1]).collect();
+    let steps: Vec<[i64; 3]> = (0..27_i64)
+        .map(|k| [k / 9 - 1, k / 3 % 3 - 1, k % 3 - 1])
+        .collect();
     for full in 0..mesh.point_count() {
         let m = mesh.triple(full);
         for step in &steps {
@@ -225,7 +266,12 @@ fn neighbours(mesh: &QMesh) -> Vec<Vec<usize>> {
         }
     }
     // Commensurate points beside the mesh touch the corners of the mesh cell they lie in.
-    for (point, known) in mesh.points().iter().enumerate().filter(|(_, p)| p.multiplicity == 0) {
+    for (point, known) in mesh
+        .points()
+        .iter()
+        .enumerate()
+        .filter(|(_, p)| p.multiplicity == 0)
+    {
         for corner in 0..8_i64 {
             let m = std::array::from_fn(|axis| {
                 let scaled = (known.q[axis] * n[axis] as f64).floor();

@@ -109,7 +109,10 @@ pub fn image_vector(image: &ImageTranslation) -> Vector3<f64> {
 /// Length of the shortest vector of the supercell lattice, Å: the first of a Minkowski-reduced basis.
 pub fn shortest_supercell_vector_ang(crystal: &Crystal, supercell: &Supercell) -> f64 {
     let vectors = ImageSearch::new(crystal, supercell).reduced * crystal.cell();
-    vectors.row_iter().map(|row| row.norm()).fold(f64::INFINITY, f64::min)
+    vectors
+        .row_iter()
+        .map(|row| row.norm())
+        .fold(f64::INFINITY, f64::min)
 }
 
 /// The search for images of a pair, also used with other ways of sharing.

@@ -1,4 +1,5 @@
-//! Born–von Kármán models of cubic metals from `reference/bvk_models.toml`; units, sources and marks are in that file.
+//! Born–von Kármán models of cubic metals from `reference/bvk_models.toml`; units, sources and
+//! marks are in that file.
 
 use nalgebra::Matrix3;
 use serde::Deserialize;
@@ -130,7 +131,8 @@ impl Metal {
             .collect()
     }
 
-    /// K of one shell, eV/Å²: the listed elements, and those that follow by K = Kᵀ and the operations that keep R.
+    /// K of one shell, eV/Å²: the listed elements, and those that follow by K = Kᵀ and the
+    /// operations that keep R.
     fn tensor(&self, vector: [i64; 3], shell: u32) -> Matrix3<f64> {
         let stabiliser: Vec<_> = cubic_operations()
             .into_iter()

@@ -1,7 +1,9 @@
-//! Checks against the outside: constants of nature, tables of other people, closed forms of textbooks, measurements.
+//! Checks against the outside: constants of nature, tables of other people, closed forms of
+//! textbooks, measurements.
 //!
-//! Every value compared with stands in a file of `tests/reference/` whose head names its source, or beside its source
-//! in the test. Where a file carries a mark, only verified rows are asserted tightly.
+//! Every value compared with stands in a file of `tests/reference/` whose head names its source, or
+//! beside its source in the test. Where a file carries a mark, only verified rows are asserted
+//! tightly.
 
 #[cfg(test)]
 mod debye;
