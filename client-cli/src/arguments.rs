@@ -252,6 +252,9 @@ pub struct FetchArgs {
     /// Where to.
     #[command(flatten)]
     pub connect: ConnectArgs,
+    /// How to write.
+    #[command(flatten)]
+    pub format: FormatArgs,
 }
 
 /// Arguments of `rank`.
@@ -317,6 +320,9 @@ mod tests {
         assert!(words.join(" ").contains("3 rejected, 4 held, 5 not found"));
         for command in root.get_subcommands_mut() {
             let name = command.get_name().to_owned();
+            if name == "help" {
+                continue;
+            }
             let help = command.render_long_help().to_string();
             assert!(help.contains(&format!("tarehouse {name}")), "{name}");
             assert!(help.contains("Examples:"), "{name}");

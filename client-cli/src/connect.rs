@@ -19,9 +19,9 @@ use crate::failure::Failure;
 /// How long a connection may take to be made.
 const CONNECT_TIMEOUT: Duration = Duration::from_secs(10);
 /// How long a single answer may take.
-const ANSWER_TIMEOUT: Duration = Duration::from_secs(60);
+const ANSWER_TIMEOUT: Duration = Duration::from_mins(1);
 /// How long sealing may take: the service decodes the whole package.
-const SEAL_TIMEOUT: Duration = Duration::from_secs(600);
+const SEAL_TIMEOUT: Duration = Duration::from_mins(10);
 /// Pause between two pings of a silent connection.
 const KEEPALIVE_INTERVAL: Duration = Duration::from_secs(30);
 /// How long a ping may stay unanswered.
@@ -65,6 +65,14 @@ impl Target {
         match self {
             Self::Server(url) => format!("--server {url}"),
             Self::Local(dir) => format!("--local {}", dir.display()),
+        }
+    }
+
+    /// What becomes of a sealed submission when this process ends.
+    pub fn without_you(&self) -> &'static str {
+        match self {
+            Self::Server(_) => "The service goes on without you",
+            Self::Local(_) => "The store keeps what was sent and goes on when it is opened again",
         }
     }
 }

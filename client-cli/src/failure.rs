@@ -147,8 +147,7 @@ impl Failure {
                 io::ErrorKind::PermissionDenied => Exit::NotAllowed,
                 _ => Exit::Internal,
             },
-            Self::Connect { .. } => Exit::Unavailable,
-            Self::LocalStore { .. } => Exit::Unavailable,
+            Self::Connect { .. } | Self::LocalStore { .. } => Exit::Unavailable,
             Self::Service { status, .. } => {
                 if status.code() == Code::Unknown && is_transport(status) {
                     Exit::Unavailable
@@ -156,11 +155,12 @@ impl Failure {
                     Exit::from_grpc(status.code())
                 }
             }
-            Self::Contract(_) | Self::Damaged { .. } | Self::Internal { .. } => Exit::Internal,
             Self::NotFound { .. } => Exit::NotFound,
             Self::Patience { .. } => Exit::Deadline,
             Self::Output(error) if error.kind() == io::ErrorKind::BrokenPipe => Exit::OutputClosed,
-            Self::Output(_) => Exit::Internal,
+            Self::Contract(_) | Self::Damaged { .. } | Self::Internal { .. } | Self::Output(_) => {
+                Exit::Internal
+            }
             Self::Interrupted { .. } => Exit::Interrupted,
         }
     }

@@ -21,9 +21,9 @@ const BLIND_PAUSE_MAX: Duration = Duration::from_secs(10);
 /// Shortest and longest pause taken from advice.
 const ADVICE_MIN: Duration = Duration::from_millis(50);
 /// Longest pause taken from advice.
-const ADVICE_MAX: Duration = Duration::from_secs(60);
+const ADVICE_MAX: Duration = Duration::from_mins(1);
 /// How long advice is followed in all.
-const ADVICE_PATIENCE: Duration = Duration::from_secs(3600);
+const ADVICE_PATIENCE: Duration = Duration::from_hours(1);
 
 /// How pauses pass.
 #[derive(Debug, Clone, Default)]

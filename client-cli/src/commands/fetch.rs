@@ -17,8 +17,10 @@ use crate::exit::Exit;
 use crate::failure::Failure;
 use crate::progress::{Bars, Handle};
 use crate::render::numbers::bytes;
+use crate::render::text::clean;
 use crate::retry::{Pause, Retry};
 use crate::waiting;
+use crate::wire_json;
 
 /// File of the force constants where a package has several files and none was named.
 const USUAL_CONSTANTS: &str = "constants.npy";
@@ -34,7 +36,7 @@ pub async fn run(args: FetchArgs, context: &mut Context<'_>) -> Result<Exit, Fai
             next: "choose another name, or overwrite it with --force.".to_owned(),
         });
     }
-    let target = context.target(&args.connect)?;
+    let target = context.existing_target(&args.connect)?;
     let note = ResumeNote::default();
     note.set("Nothing was written.");
     let name = resource_name("submissions", &args.id);
@@ -65,14 +67,18 @@ pub async fn run(args: FetchArgs, context: &mut Context<'_>) -> Result<Exit, Fai
         .await
     })
     .await?;
-    context.console.message(&format!(
-        "{} of {} ({}, BLAKE3 {}) is in {}.",
-        fetched.array,
-        name,
-        bytes(fetched.size_bytes),
-        fetched.digest,
-        args.out.display()
-    ));
+    let text = if context.console.wants_json(args.format.format) {
+        wire_json::pretty(&fetched)?
+    } else {
+        format!(
+            "{} of {name} ({}, BLAKE3 {}) is in {}.",
+            clean(&fetched.array),
+            bytes(fetched.size_bytes),
+            fetched.digest,
+            args.out.display()
+        )
+    };
+    context.console.data(&text)?;
     Ok(Exit::Done)
 }
 

@@ -23,7 +23,7 @@ use crate::wire_json;
 /// The service's answer.
 pub async fn run(args: ListArgs, context: &mut Context<'_>) -> Result<Exit, Failure> {
     check_filters(&args)?;
-    let target = context.target(&args.connect)?;
+    let target = context.existing_target(&args.connect)?;
     let json = context.console.wants_json(args.format.format);
     let view = context.console.view();
     let work = async |session: &Session, context: &mut Context<'_>| {

@@ -53,6 +53,22 @@ impl Context<'_> {
     pub fn target(&self, args: &ConnectArgs) -> Result<Target, Failure> {
         Target::choose(args, self.server_from_environment.as_deref())
     }
+
+    /// As [`Context::target`], for commands that read: a store that is not there is not made.
+    ///
+    /// # Errors
+    /// [`Failure::Usage`] where no service is named, [`Failure::NotFound`] where there is no store.
+    pub fn existing_target(&self, args: &ConnectArgs) -> Result<Target, Failure> {
+        let target = self.target(args)?;
+        match &target {
+            Target::Local(dir) if !dir.is_dir() => Err(Failure::NotFound {
+                what: format!("there is no store in {}", dir.display()),
+                next: "check the folder; `tarehouse submit PACKAGE --local DIR` makes a store."
+                    .to_owned(),
+            }),
+            Target::Local(_) | Target::Server(_) => Ok(target),
+        }
+    }
 }
 
 /// What to tell somebody who stops the command: changes while it runs.
@@ -102,6 +118,7 @@ pub async fn in_session<T>(
     work: impl AsyncFnOnce(&Session, &mut Context<'_>) -> Result<T, Failure>,
 ) -> Result<T, Failure> {
     let interrupt = context.interrupt.clone();
+    let is_local = matches!(target, Target::Local(_));
     let session = tokio::select! {
         session = Session::open(target) => session?,
         () = interrupt.clone().raised() => return Err(interrupted(note)),
@@ -110,6 +127,11 @@ pub async fn in_session<T>(
         done = work(&session, context) => done,
         () = interrupt.raised() => Err(interrupted(note)),
     };
+    if is_local && matches!(done, Err(Failure::Interrupted { .. })) {
+        context
+            .console
+            .message("Stopping: the store is being closed. Ctrl-C again ends at once.");
+    }
     let closed = session.close().await;
     let value = done?;
     closed?;

@@ -21,7 +21,7 @@ const SAME_TEMPERATURE_K: f64 = 1e-6;
 /// The service's answer; [`Failure::NotFound`] where no table is left.
 pub async fn run(args: RankArgs, context: &mut Context<'_>) -> Result<Exit, Failure> {
     let sort_index = sort_index(&args)?;
-    let target = context.target(&args.connect)?;
+    let target = context.existing_target(&args.connect)?;
     let work = async |session: &Session, context: &mut Context<'_>| {
         get(session, &args.compound, &args.temperature, &context.pause).await
     };

@@ -17,7 +17,7 @@ use crate::wire_json;
 /// # Errors
 /// Why there is no report.
 pub async fn run(args: ReportArgs, context: &mut Context<'_>) -> Result<Exit, Failure> {
-    let target = context.target(&args.connect)?;
+    let target = context.existing_target(&args.connect)?;
     let name = resource_name("submissions", &args.id);
     let wants_json = context.console.wants_json(args.format.format);
     let work = async |session: &Session, context: &mut Context<'_>| {

@@ -42,7 +42,13 @@ pub async fn run(args: SubmitArgs, context: &mut Context<'_>) -> Result<Exit, Fa
     Ok(Exit::worst(outcomes.iter().map(|outcome| outcome.exit)))
 }
 
-async fn submit_all(
+/// Sends every folder, then waits for the verdicts unless told not to.
+///
+/// Where the service is lost, the folders that remain are not tried one by one.
+///
+/// # Errors
+/// None so far: what befalls a folder is in its outcome.
+pub async fn submit_all(
     session: &Session,
     context: &mut Context<'_>,
     args: &SubmitArgs,
@@ -51,10 +57,16 @@ async fn submit_all(
     let bars = context.bars();
     let pause = context.pause.clone();
     let mut outcomes = Vec::new();
+    let mut lost = None;
     for folder in &args.packages {
+        if let Some(exit) = lost {
+            outcomes.push(not_tried(folder, exit));
+            continue;
+        }
         let sent = send_folder(session, folder, &bars, &pause).await;
         if let Err(failure) = &sent {
             context.tell(failure);
+            lost = is_lost(failure).then(|| failure.exit());
         }
         outcomes.push(outcome(folder, sent));
         note.set(resume_text(session, args, &outcomes));
@@ -120,6 +132,24 @@ pub async fn send_package(
     upload::seal(session, &submission.name, &files.folder, pause).await
 }
 
+/// Whether the next folder would meet the same failure.
+fn is_lost(failure: &Failure) -> bool {
+    matches!(failure, Failure::Service { .. })
+        && matches!(
+            failure.exit(),
+            Exit::Unavailable | Exit::NotAllowed | Exit::Quota
+        )
+}
+
+fn not_tried(folder: &Path, exit: Exit) -> Outcome {
+    Outcome {
+        folder: folder.display().to_string(),
+        submission: None,
+        exit,
+        problems: vec!["not tried, after the failure before".to_owned()],
+    }
+}
+
 fn outcome(folder: &Path, sent: Result<Submission, Failure>) -> Outcome {
     let folder = folder.display().to_string();
     match sent {
@@ -160,21 +190,22 @@ fn resume_text(session: &Session, args: &SubmitArgs, outcomes: &[Outcome]) -> St
         .skip(outcomes.len())
         .map(|folder: &PathBuf| folder.display().to_string())
         .collect();
-    let mut text = String::new();
-    if let Some(last) = names.last() {
-        text.push_str(&format!(
-            "{} of {} packages were sent and go on without you: `tarehouse watch {last} {to}` waits for the last.",
+    let sent = names.last().map(|last| {
+        format!(
+            "{} of {} packages were sent. {}: `tarehouse watch {last} {to}` waits for the last.",
             names.len(),
-            args.packages.len()
-        ));
-    }
-    if !rest.is_empty() {
-        text.push_str(&format!(
-            " The rest goes on where it stopped with `tarehouse submit {} {to}`.",
+            args.packages.len(),
+            session.target().without_you(),
+        )
+    });
+    let unsent = (!rest.is_empty()).then(|| {
+        format!(
+            "The rest goes on where it stopped with `tarehouse submit {} {to}`.",
             rest.join(" ")
-        ));
-    }
-    text
+        )
+    });
+    let parts: Vec<String> = sent.into_iter().chain(unsent).collect();
+    parts.join(" ")
 }
 
 fn show(context: &mut Context<'_>, args: &SubmitArgs, outcomes: &[Outcome]) -> Result<(), Failure> {

@@ -18,11 +18,12 @@ use crate::wire_json;
 /// # Errors
 /// Why no verdict was reached.
 pub async fn run(args: WatchArgs, context: &mut Context<'_>) -> Result<Exit, Failure> {
-    let target = context.target(&args.connect)?;
+    let target = context.existing_target(&args.connect)?;
     let name = resource_name("submissions", &args.id);
     let note = ResumeNote::default();
     note.set(format!(
-        "It goes on without you; `tarehouse watch {} {}` waits again.",
+        "{}; `tarehouse watch {} {}` waits again.",
+        target.without_you(),
         args.id,
         target.as_arguments()
     ));

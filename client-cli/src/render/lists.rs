@@ -30,6 +30,7 @@ pub fn submissions(all: &[Submission], view: View) -> String {
             id_of(&submission.name),
         ]);
     }
+    table.drop_until_it_fits(view.width, &["changed (UTC)"]);
     table.to_text(view)
 }
 
@@ -67,6 +68,14 @@ pub fn records(all: &[Record], view: View) -> String {
             id_of(&record.name),
         ]);
     }
+    let droppable = [
+        "cautions",
+        "g/cm³",
+        "static kJ/mol",
+        "± at 300 K",
+        "symmetry",
+    ];
+    table.drop_until_it_fits(view.width, &droppable);
     table.to_text(view)
 }
 
@@ -154,7 +163,6 @@ pub fn summary(outcomes: &[Outcome], view: View) -> String {
     let mut table = Table::new(&[
         ("folder", Kind::Words),
         ("outcome", Kind::Name),
-        ("main reason", Kind::Words),
         ("submission", Kind::Name),
     ]);
     for outcome in outcomes {
@@ -167,7 +175,6 @@ pub fn summary(outcomes: &[Outcome], view: View) -> String {
         table.row(vec![
             clean(&outcome.folder).into_owned(),
             state,
-            main_reason(outcome),
             outcome
                 .submission
                 .as_ref()
@@ -177,20 +184,30 @@ pub fn summary(outcomes: &[Outcome], view: View) -> String {
     }
     table.write(&mut page, 0);
     page.gap();
+    for outcome in outcomes {
+        if let Some(reason) = main_reason(outcome) {
+            page.hanging("", "  ", &format!("{}: {reason}", clean(&outcome.folder)));
+        }
+    }
+    page.gap();
     page.paragraph(0, &totals(outcomes));
     page.finish()
 }
 
-fn main_reason(outcome: &Outcome) -> String {
-    let reason = outcome.problems.first().or_else(|| {
-        outcome
-            .submission
-            .as_ref()
-            .and_then(|submission| submission.verdict_reasons.first())
-    });
-    reason
-        .map(|reason| clean(reason).into_owned())
-        .unwrap_or_default()
+/// What weighs most: why there is no verdict, or the first reason of the verdict.
+fn main_reason(outcome: &Outcome) -> Option<String> {
+    let submission = outcome.submission.as_ref();
+    let reasons = submission.map_or(&[][..], |submission| &submission.verdict_reasons);
+    let all = if outcome.problems.is_empty() {
+        reasons
+    } else {
+        &outcome.problems
+    };
+    let first = clean(all.first()?).into_owned();
+    Some(match all.len() {
+        1 => first,
+        count => format!("{first} (and {} more)", count - 1),
+    })
 }
 
 fn totals(outcomes: &[Outcome]) -> String {
@@ -249,7 +266,7 @@ mod tests {
     #[test]
     fn a_summary_counts_outcomes_and_shows_the_main_reason() {
         let mut outcomes = vec![
-            outcome("a", State::Accepted, Exit::Done, ""),
+            outcome("a", State::Accepted, Exit::Done, "nothing to say"),
             outcome(
                 "b",
                 State::Held,
@@ -262,12 +279,28 @@ mod tests {
             folder: "d".to_owned(),
             submission: None,
             exit: Exit::Usage,
-            problems: vec!["package.toml: missing key".to_owned()],
+            problems: vec!["package.toml: missing key".to_owned(), "another".to_owned()],
         });
         let text = summary(&outcomes, View::plain(100));
         assert!(text.contains("4 packages: 1 accepted, 2 held, 1 invalid."));
-        assert!(text.contains("the bracket is wide"));
-        assert!(text.contains("package.toml: missing key"));
+        assert!(text.contains("c: the bracket is wide"));
+        assert!(text.contains("d: package.toml: missing key (and 1 more)"));
+    }
+
+    #[test]
+    fn records_stay_a_table_on_a_narrow_screen() {
+        let record = Record {
+            name: format!("records/{}", "a".repeat(32)),
+            compound: "velnaric acid".to_owned(),
+            form: "II".to_owned(),
+            space_group_symbol: "P 2_1/c".to_owned(),
+            ..Record::default()
+        };
+        for width in [60, 80, 120] {
+            let text = records(std::slice::from_ref(&record), View::plain(width));
+            assert_eq!(text.lines().count(), 3, "{text}");
+            assert!(text.contains(&"a".repeat(32)) && text.contains("velnaric acid"));
+        }
     }
 
     #[test]

@@ -54,6 +54,22 @@ impl Table {
         widths.iter().sum::<usize>() + GAP * widths.len().saturating_sub(1)
     }
 
+    /// Drops the named columns, one after the other, until the table fits into `room` without wrapping.
+    pub fn drop_until_it_fits(&mut self, room: usize, droppable: &[&str]) {
+        for title in droppable {
+            if self.natural_width() <= room {
+                return;
+            }
+            let Some(column) = self.columns.iter().position(|(known, _)| known == title) else {
+                continue;
+            };
+            self.columns.remove(column);
+            for row in &mut self.rows {
+                row.remove(column);
+            }
+        }
+    }
+
     fn natural_widths(&self) -> Vec<usize> {
         self.columns
             .iter()
@@ -235,6 +251,16 @@ mod tests {
         let text = table.to_text(View::plain(40));
         assert!(text.lines().all(|line| visible_width(line) <= 40));
         assert!(text.contains("form   II"));
+    }
+
+    #[test]
+    fn columns_are_dropped_in_the_given_order_and_no_more_than_needed() {
+        let mut table = sample();
+        table.drop_until_it_fits(39, &["reason", "kJ/mol"]);
+        assert_eq!(table.natural_width(), 39);
+        table.drop_until_it_fits(38, &["no such column", "reason", "kJ/mol"]);
+        let text = table.to_text(View::plain(80));
+        assert!(!text.contains("reason") && text.contains("-12.50"));
     }
 
     #[test]

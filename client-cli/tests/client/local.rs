@@ -242,6 +242,25 @@ async fn an_interrupted_submit_says_how_to_go_on_and_its_work_survives() {
 }
 
 #[tokio::test(flavor = "multi_thread")]
+async fn reading_makes_no_store() {
+    let folder = tempfile::tempdir().unwrap();
+    let store = folder.path().join("no-such-store");
+    for words in [
+        &["list"][..],
+        &["rank", "drosmelide"],
+        &["report", "1"],
+        &["watch", "1"],
+        &["fetch", "1", "--out", "never-written"],
+    ] {
+        let words = [words, &["--local", text(&store)]].concat();
+        let ended = tarehouse(&words).await;
+        assert_eq!(ended.exit, Exit::NotFound, "{words:?}");
+        assert!(ended.err.contains("no store"), "{}", ended.err);
+    }
+    assert!(!store.exists());
+}
+
+#[tokio::test(flavor = "multi_thread")]
 async fn a_policy_file_governs_the_precheck() {
     let folder = tempfile::tempdir().unwrap();
     let policy = folder.path().join("policy.toml");

@@ -3,9 +3,14 @@
 use std::collections::{BTreeMap, VecDeque};
 use std::sync::{Arc, Mutex};
 
+use clap::Parser as _;
+use tarehouse_client::arguments::{Arguments, Command};
 use tarehouse_client::commands::fetch::to_file;
-use tarehouse_client::commands::submit::send_package;
+use tarehouse_client::commands::submit::{send_package, submit_all};
+use tarehouse_client::commands::{Context, ResumeNote};
+use tarehouse_client::console::{Console, Traits};
 use tarehouse_client::exit::Exit;
+use tarehouse_client::interrupt::Interrupt;
 use tarehouse_client::package_folder::PackageFiles;
 use tarehouse_client::progress::Bars;
 use tarehouse_client::retry::Pause;
@@ -15,6 +20,7 @@ use tarehouse_proto::v1::watch_submission_response::Event;
 use tarehouse_proto::v1::{FetchArrayRequest, Heartbeat, State};
 
 use crate::fake::{Fake, NAME, Script, state};
+use crate::support::{demo_package, text};
 
 fn noted() -> Pause {
     Pause::Noted(Arc::new(Mutex::new(Vec::new())))
@@ -22,7 +28,7 @@ fn noted() -> Pause {
 
 /// A package of one array of `size` bytes.
 fn files(size: usize) -> PackageFiles {
-    let bytes: Vec<u8> = (0..size).map(|k| (k % 249) as u8).collect();
+    let bytes: Vec<u8> = (0..249_u8).cycle().take(size).collect();
     PackageFiles {
         folder: "package".to_owned(),
         manifest: "".into(),
@@ -167,5 +173,48 @@ async fn a_cut_fetch_goes_on_and_a_wrong_digest_writes_nothing() {
         std::fs::read_dir(folder.path()).unwrap().count(),
         1,
         "no other file is left"
+    );
+}
+
+#[tokio::test]
+async fn a_lost_service_is_not_tried_again_for_every_folder() {
+    let fake = Fake::with(Script {
+        away: usize::MAX,
+        ..Script::default()
+    });
+    let session = fake.session().await;
+    let package = demo_package("drosmelide-i");
+    let words = [
+        "tarehouse",
+        "submit",
+        text(&package),
+        text(&package),
+        text(&package),
+    ];
+    let Command::Submit(args) = Arguments::try_parse_from(words).unwrap().command else {
+        panic!("not submit");
+    };
+    let sink = || Box::new(std::io::sink());
+    let mut console = Console::new(sink(), sink(), Traits::pipes());
+    let mut context = Context {
+        console: &mut console,
+        server_from_environment: None,
+        pause: noted(),
+        interrupt: Interrupt::never(),
+    };
+    let outcomes = submit_all(&session, &mut context, &args, &ResumeNote::default())
+        .await
+        .unwrap();
+    assert_eq!(outcomes.len(), 3);
+    assert!(
+        outcomes
+            .iter()
+            .all(|outcome| outcome.exit == Exit::Unavailable)
+    );
+    let script = fake.0.lock().unwrap();
+    let first = &script.request_ids[0];
+    assert!(
+        script.request_ids.iter().all(|id| id == first),
+        "only the first folder was tried"
     );
 }
