@@ -26,7 +26,7 @@ const SERVICE: &str = "service";
 /// When to come back to a full queue or to too many streams.
 const RETRY_AFTER: Duration = Duration::from_secs(5);
 /// When to come back with too many drafts.
-const QUOTA_RETRY_AFTER: Duration = Duration::from_secs(60);
+const QUOTA_RETRY_AFTER: Duration = Duration::from_mins(1);
 
 /// Why the service could not be opened.
 #[derive(Debug, thiserror::Error)]
@@ -66,7 +66,7 @@ pub(crate) struct Core {
     pub(crate) uploads: Uploads,
     fetches: Arc<Semaphore>,
     watches: Arc<Semaphore>,
-    cpu: Arc<Semaphore>,
+    computing: Arc<Semaphore>,
     sealing: Mutex<()>,
     manifests: Memory<ManifestFacts>,
     reports: Memory<ReportFacts>,
@@ -116,7 +116,7 @@ impl Core {
             uploads: Uploads::new(config.upload_streams_max),
             fetches: Arc::new(Semaphore::new(config.upload_streams_max)),
             watches: Arc::new(Semaphore::new(limits::WATCHES_MAX)),
-            cpu: Arc::new(Semaphore::new(config.workers)),
+            computing: Arc::new(Semaphore::new(config.workers)),
             sealing: Mutex::new(()),
             manifests: Memory::default(),
             reports: Memory::default(),
@@ -131,7 +131,7 @@ impl Core {
 
     /// Closes the store; what is acknowledged is durable with or without it.
     pub(crate) async fn close(&self) {
-        if let Err(failure) = self.depot.ask(|store| store.close()).await {
+        if let Err(failure) = self.depot.ask(Store::close).await {
             tracing::warn!(
                 ?failure,
                 "the store was not closed cleanly; its index is built anew"
@@ -149,23 +149,17 @@ impl Core {
         Actor::new(principal.0.clone()).under(self.config.policy.digest)
     }
 
-    /// A place among those that compute.
-    pub(crate) async fn cpu_slot(&self) -> Result<OwnedSemaphorePermit, Failure> {
-        Arc::clone(&self.cpu)
-            .acquire_owned()
-            .await
-            .map_err(Failure::internal)
-    }
-
-    /// Computes on a blocking thread when there is a place.
+    /// Computes for a caller on a blocking thread when there is a place. Examinations have their own places, so that
+    /// a long one keeps nobody from creating or sealing.
     pub(crate) async fn compute<T: Send + 'static>(
         &self,
         work: impl FnOnce() -> T + Send + 'static,
     ) -> Result<T, Failure> {
-        let slot = self.cpu_slot().await?;
+        let place = Arc::clone(&self.computing).acquire_owned().await;
+        let place = place.map_err(Failure::internal)?;
         tokio::task::spawn_blocking(move || {
             let result = work();
-            drop(slot);
+            drop(place);
             result
         })
         .await

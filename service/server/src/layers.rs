@@ -166,6 +166,10 @@ pub(crate) fn stream_failure(status: Status) -> Status {
 }
 
 /// The answer where a handler panicked.
+#[allow(
+    clippy::needless_pass_by_value,
+    reason = "the layer that catches panics hands the payload over"
+)]
 pub(crate) fn panicked(payload: Box<dyn Any + Send + 'static>) -> Response<Body> {
     Status::from(Failure::internal(panic_text(payload.as_ref()))).into_http()
 }
@@ -208,7 +212,7 @@ mod tests {
     }
 
     fn short() -> Deadlines {
-        let (brief, long) = (Duration::from_millis(20), Duration::from_secs(60));
+        let (brief, long) = (Duration::from_millis(20), Duration::from_mins(1));
         Deadlines {
             read: brief,
             write: long,

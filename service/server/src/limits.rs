@@ -3,17 +3,17 @@
 use tarehouse_proto::{limits, v1};
 
 /// Bytes of one chunk.
-pub const CHUNK_BYTES_MAX: usize = narrow(limits::CHUNK_BYTES.max);
+pub const CHUNK_BYTES_MAX: usize = narrow(limits::CHUNK_BYTES.max) as usize;
 /// Bytes of one message of an upload stream, frame and all.
 pub const UPLOAD_MESSAGE_BYTES_MAX: usize = 1024 * 1024;
 /// Bytes of one message to any other method: a manifest with its declarations.
 pub const MESSAGE_BYTES_MAX: usize = 2 * 1024 * 1024;
 /// Entries on one page of a list.
-pub const PAGE_SIZE_MAX: u32 = narrow(limits::PAGE_SIZE.max) as u32;
+pub const PAGE_SIZE_MAX: u32 = narrow(limits::PAGE_SIZE.max);
 /// Entries on one page where the request says 0.
 pub const PAGE_SIZE_DEFAULT: u32 = limits::PAGE_SIZE_DEFAULT;
 /// Temperatures in one ranking.
-pub const TEMPERATURES_MAX: usize = narrow(limits::TEMPERATURES.max);
+pub const TEMPERATURES_MAX: usize = narrow(limits::TEMPERATURES.max) as usize;
 /// Records that one ranking reads.
 pub const RANKED_RECORDS_MAX: usize = 2000;
 /// Arrays of one submission.
@@ -23,17 +23,17 @@ pub const WATCHES_MAX: usize = 1024;
 /// Bytes of a free text: reason, compound, level, contributor key in a filter.
 pub const TEXT_BYTES_MAX: usize = 1024;
 
-/// A limit of the contract as a length in memory; each is far below 2^32.
+/// A limit of the contract that is far below 2^32.
 #[allow(
     clippy::cast_possible_truncation,
     reason = "the limits of the contract are checked to be small at compile time"
 )]
-const fn narrow(limit: u64) -> usize {
+const fn narrow(limit: u64) -> u32 {
     assert!(
         limit <= u32::MAX as u64,
         "a limit of the contract is too large"
     );
-    limit as usize
+    limit as u32
 }
 
 /// The table as `GetServerInfo` tells it.

@@ -173,7 +173,7 @@ fn energy_at(grid: &[v1::FreeEnergy], temperature_k: f64) -> Result<Energy, Stri
     let outside = || format!("examined on a grid that does not reach {temperature_k} K");
     let high = grid.get(above).ok_or_else(outside)?;
     if high.temperature_k.total_cmp(&temperature_k) == Ordering::Equal {
-        return defined(high).map(|point| at_node(point));
+        return defined(high).map(at_node);
     }
     let low = above
         .checked_sub(1)

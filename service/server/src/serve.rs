@@ -15,6 +15,7 @@ use tokio::io::{AsyncRead, AsyncWrite, DuplexStream};
 use tokio::net::TcpListener;
 use tokio::sync::mpsc;
 use tokio::task::JoinHandle;
+use tokio::time::{Instant, timeout, timeout_at};
 use tokio_stream::Stream;
 use tokio_stream::StreamExt as _;
 use tokio_stream::wrappers::ReceiverStream;
@@ -39,6 +40,8 @@ use crate::services;
 const KEEPALIVE_INTERVAL: Duration = Duration::from_secs(30);
 /// How long a ping may stay unanswered.
 const KEEPALIVE_TIMEOUT: Duration = Duration::from_secs(10);
+/// Calls open on one connection at the same time.
+const STREAMS_PER_CONNECTION_MAX: u32 = 256;
 /// What cut streams may take to end.
 const CUT_TIME: Duration = Duration::from_secs(1);
 /// Bytes on their way in one direction of a connection inside the process.
@@ -127,7 +130,7 @@ pub async fn in_process_with(
     let stop = CancellationToken::new();
     let stopped = stop.clone();
     let task = tokio::spawn(serve_on(incoming, core, async move {
-        stopped.cancelled().await
+        stopped.cancelled().await;
     }));
     let connector = tower::service_fn(move |_: http::Uri| {
         let dial = dial.clone();
@@ -188,22 +191,13 @@ where
     };
     stop_taking_work(&core, health).await;
     closing.cancel();
-    let deadline = tokio::time::Instant::now() + core.config.grace;
+    let deadline = Instant::now() + core.config.grace;
     let ended = match early {
         Some(ended) => ended,
-        None => match tokio::time::timeout_at(deadline, &mut server).await {
-            Ok(ended) => ended,
-            Err(_) => {
-                tracing::warn!("calls outlived the grace time: cutting them");
-                core.drain.cut();
-                tokio::time::timeout(CUT_TIME, &mut server)
-                    .await
-                    .unwrap_or(Ok(()))
-            }
-        },
+        None => ended_in_time(&core, &mut server, deadline).await,
     };
     core.drain.cut();
-    if tokio::time::timeout_at(deadline, workers).await.is_err() {
+    if timeout_at(deadline, workers).await.is_err() {
         tracing::warn!(
             "an examination outlived the grace time: it is done again after the next start"
         );
@@ -214,6 +208,20 @@ where
         return Err(ServeError::Broken);
     }
     Ok(())
+}
+
+/// Waits for running calls until `deadline`, then cuts their streams.
+async fn ended_in_time(
+    core: &Core,
+    server: &mut (impl Future<Output = Result<(), tonic::transport::Error>> + Unpin),
+    deadline: Instant,
+) -> Result<(), tonic::transport::Error> {
+    if let Ok(ended) = timeout_at(deadline, &mut *server).await {
+        return ended;
+    }
+    tracing::warn!("calls outlived the grace time: cutting them");
+    core.drain.cut();
+    timeout(CUT_TIME, server).await.unwrap_or(Ok(()))
 }
 
 /// The transport with the layers of every call, outermost first; it stops accepting when `closing` is cancelled.
@@ -230,6 +238,7 @@ where
 {
     let secret = [AUTHORIZATION, COOKIE, HeaderName::from_static("x-api-key")];
     Server::builder()
+        .max_concurrent_streams(STREAMS_PER_CONNECTION_MAX)
         .http2_keepalive_interval(Some(KEEPALIVE_INTERVAL))
         .http2_keepalive_timeout(Some(KEEPALIVE_TIMEOUT))
         .layer(SetRequestIdLayer::x_request_id(MakeRequestUuid))

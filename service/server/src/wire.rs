@@ -34,9 +34,9 @@ pub(crate) fn state(state: State) -> v1::State {
     }
 }
 
-/// A state of a filter; unspecified is any, and a number that nobody knows is none.
-pub(crate) fn state_filter(number: i32) -> Option<Option<State>> {
-    Some(match v1::State::try_from(number).ok()? {
+/// A state of a filter; unspecified is any, and a number that nobody knows is an error.
+pub(crate) fn state_filter(number: i32) -> Result<Option<State>, prost::UnknownEnumValue> {
+    Ok(match v1::State::try_from(number)? {
         v1::State::Unspecified => None,
         v1::State::Draft => Some(State::Draft),
         v1::State::Queued => Some(State::Queued),
@@ -161,10 +161,10 @@ mod tests {
     #[test]
     fn every_state_goes_over_the_wire_and_back() {
         for known in State::ALL {
-            assert_eq!(state_filter(state(*known).into()), Some(Some(*known)));
+            assert_eq!(state_filter(state(*known).into()), Ok(Some(*known)));
         }
-        assert_eq!(state_filter(0), Some(None));
-        assert_eq!(state_filter(99), None);
+        assert_eq!(state_filter(0), Ok(None));
+        assert!(state_filter(99).is_err());
     }
 
     #[test]

@@ -79,11 +79,10 @@ async fn examine(core: &Arc<Core>, lease: Lease) -> bool {
 
 /// Runs the attempt on a blocking thread.
 async fn run(core: &Arc<Core>, lease: Lease) -> Result<bool, Failure> {
-    let slot = core.cpu_slot().await?;
     let core = Arc::clone(core);
     tokio::task::spawn_blocking(move || {
         let kept = attempt_and_keep(&core, &lease);
-        drop((lease, slot));
+        drop(lease);
         kept
     })
     .await

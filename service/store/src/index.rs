@@ -35,6 +35,8 @@ pub(crate) type Change = (Committed, Vec<(SubmissionId, State)>);
 
 /// Changes applied in one transaction.
 const CHUNK: usize = 256;
+/// How long the database's threads may go on after it was let go.
+const RELEASE_LIMIT: Duration = Duration::from_secs(10);
 
 /// Reads the trail from its start and hands over every change.
 pub(crate) type Replay<'a> =
@@ -64,7 +66,7 @@ impl fmt::Debug for Core {
 pub(crate) struct Index {
     pub(crate) core: Arc<Core>,
     folder: PathBuf,
-    generation: u64,
+    generation: Mutex<u64>,
     thread: Mutex<Option<JoinHandle<()>>>,
     rebuilt: bool,
 }
@@ -147,7 +149,7 @@ impl Opening<'_> {
         let index = Index {
             core,
             folder,
-            generation,
+            generation: Mutex::new(generation),
             thread: Mutex::new(Some(thread)),
             rebuilt,
         };
@@ -171,6 +173,7 @@ impl Opening<'_> {
             .ok()?;
         match apply::applied(&db) {
             Ok(Some(applied)) if applied == self.trail => Some(db),
+            Ok(None) if self.trail.seq == 0 => Some(db),
             _ => None,
         }
     }
@@ -218,6 +221,21 @@ impl Opening<'_> {
     }
 }
 
+/// Waits until nobody holds the database's file: its own threads may write on for a moment after it was let go.
+fn wait_until_released(disk: &dyn Disk, file: &Path) -> std::io::Result<()> {
+    let deadline = Instant::now() + RELEASE_LIMIT;
+    loop {
+        match disk.lock(file) {
+            Err(error)
+                if error.kind() == std::io::ErrorKind::WouldBlock && Instant::now() < deadline =>
+            {
+                std::thread::sleep(Duration::from_millis(1));
+            }
+            other => return other.map(drop),
+        }
+    }
+}
+
 /// Applies the whole trail to an empty database.
 pub(crate) fn fill(db: &sled::Db, replay: Replay<'_>) -> Result<(), OpenError> {
     let failed = |detail: String| OpenError::Index { detail };
@@ -254,22 +272,28 @@ fn run(core: &Core, receiver: &Receiver<Change>) {
 }
 
 impl Core {
-    fn take_in(&self, changes: Vec<Change>) {
+    /// Applies changes, says how far the index is now, and tells the observers.
+    pub(crate) fn take_in(&self, changes: Vec<Change>) {
         let (chunk, states): (Vec<_>, Vec<_>) = changes.into_iter().unzip();
-        let applied = {
-            let db = self.db.read().unwrap_or_else(PoisonError::into_inner);
-            match db.as_ref() {
-                _ if self.broken().is_some() => Ok(()),
-                Some(db) => apply_guarded(db, &chunk),
-                None => Err("the index is closed".to_owned()),
-            }
-        };
         {
+            // Held until the number is set, so that a rebuild sees both or neither.
+            let db = self.db.read().unwrap_or_else(PoisonError::into_inner);
+            let (known, broken) = self.standing();
+            // A rebuild may have been ahead of this thread.
+            let new = chunk.iter().position(|change| change.seq > known);
+            let new = new.and_then(|at| chunk.get(at..)).unwrap_or_default();
+            let applied = match (db.as_ref(), broken) {
+                (_, true) => Ok(known),
+                (Some(db), false) => {
+                    apply_guarded(db, new).map(|()| new.last().map_or(known, |change| change.seq))
+                }
+                (None, false) => Err("the index is closed".to_owned()),
+            };
             let mut state = self.applied.lock().unwrap_or_else(PoisonError::into_inner);
             match applied {
-                Ok(()) => state.seq = chunk.last().map_or(state.seq, |change| change.seq),
+                Ok(seq) => state.seq = seq,
                 Err(why) => {
-                    tracing::error!(%why, "the index has failed; it is rebuilt at the next start");
+                    tracing::error!(%why, "the index has failed and must be rebuilt");
                     state.broken.get_or_insert(why);
                 }
             }
@@ -288,9 +312,10 @@ impl Core {
         }
     }
 
-    fn broken(&self) -> Option<String> {
+    /// Last change applied, and whether the index has failed.
+    fn standing(&self) -> (u64, bool) {
         let state = self.applied.lock().unwrap_or_else(PoisonError::into_inner);
-        state.broken.clone()
+        (state.seq, state.broken.is_some())
     }
 
     pub(crate) fn observe(&self, observer: Observer) {
@@ -365,12 +390,50 @@ impl Index {
         let flushed = db.is_none_or(|db| {
             catch_unwind(AssertUnwindSafe(|| db.flush().is_ok())).unwrap_or(false)
         });
-        ended && flushed && self.core.broken().is_none()
+        ended && flushed && !self.core.standing().1
     }
 
     /// Says durably that the stopped index is whole.
     pub(crate) fn mark_clean(&self, disk: &dyn Disk, trail: Mark) -> std::io::Result<()> {
-        let path = self.folder.join(generation_name(self.generation));
-        clean::write(disk, &self.folder, &path, self.generation, trail)
+        let generation = *self
+            .generation
+            .lock()
+            .unwrap_or_else(PoisonError::into_inner);
+        let path = self.folder.join(generation_name(generation));
+        wait_until_released(disk, &path.join("db"))?;
+        clean::write(disk, &self.folder, &path, generation, trail)
+    }
+
+    /// Builds a new generation up to `up_to` and swaps it in; readers and the applier wait meanwhile.
+    pub(crate) fn rebuild(
+        &self,
+        opening: &Opening<'_>,
+        up_to: u64,
+        replay: Replay<'_>,
+    ) -> Result<(), OpenError> {
+        let mut generation = self
+            .generation
+            .lock()
+            .unwrap_or_else(PoisonError::into_inner);
+        let mut db = self.core.db.write().unwrap_or_else(PoisonError::into_inner);
+        let fresh = opening.build(*generation + 1, replay)?;
+        // A panic inside the old one as it closes must not keep the new one out.
+        let old = db.replace(fresh);
+        let _ = catch_unwind(AssertUnwindSafe(|| drop(old)));
+        let path = self.folder.join(generation_name(*generation));
+        let _ = opening.disk.remove_dir_all(&path);
+        *generation += 1;
+        {
+            let mut state = self
+                .core
+                .applied
+                .lock()
+                .unwrap_or_else(PoisonError::into_inner);
+            state.seq = up_to;
+            state.broken = None;
+        }
+        drop(db);
+        self.core.moved.notify_all();
+        Ok(())
     }
 }

@@ -67,7 +67,7 @@ impl Default for Options {
             }),
             segment_bytes_max: 32 << 20,
             read_wait: Duration::from_secs(5),
-            index_open_limit: Duration::from_secs(60),
+            index_open_limit: Duration::from_mins(1),
             index_cache_bytes: 64 << 20,
             tolerate_missing_objects: false,
         }
@@ -105,8 +105,6 @@ pub(crate) struct Core {
     /// Submissions under examination, with the number of the lease.
     pub(crate) leases: HashMap<SubmissionId, u64>,
     pub(crate) lease_count: u64,
-    /// Why the ledger could not follow the trail; never in a correct program.
-    pub(crate) astray: Option<String>,
 }
 
 struct Inner {
@@ -256,7 +254,7 @@ impl Inner {
             program_version: self.options.program_version.clone(),
             event,
         });
-        let seq = answer.map_err(|error| match error {
+        answer.map_err(|error| match error {
             CommitError::NoSpace => StoreError::NoSpace,
             CommitError::Io(error) => StoreError::Io {
                 doing: "writing the trail",
@@ -264,11 +262,7 @@ impl Inner {
             },
             CommitError::Poisoned(why) => StoreError::Poisoned(why),
             CommitError::Closed => StoreError::Closed,
-        })?;
-        match &self.shared.lock().astray {
-            Some(why) => Err(StoreError::Poisoned(why.clone())),
-            None => Ok(seq),
-        }
+        })
     }
 
     /// Stores bytes as an object; a failed sync poisons the store.
@@ -312,5 +306,61 @@ impl Inner {
 impl Drop for Inner {
     fn drop(&mut self) {
         self.stop();
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::trail::writer::Committed;
+    use crate::view::NewSubmission;
+
+    fn new(number: u8) -> NewSubmission {
+        NewSubmission {
+            request_id: number.to_string(),
+            package_digest: [number; 32],
+            manifest: vec![number],
+            arrays: Vec::new(),
+            compound: "velnaric acid".to_owned(),
+            form: "I".to_owned(),
+            formula: "C4 H6 O2".to_owned(),
+            contributor_key: None,
+        }
+    }
+
+    #[test]
+    fn a_failed_index_stops_reads_not_answers_and_can_be_rebuilt() {
+        let folder = tempfile::tempdir().unwrap();
+        let store = Store::open(folder.path(), Options::default()).unwrap();
+        let actor = Actor::new("mira");
+        let first = store.create_submission(&actor, new(1)).unwrap().id;
+        store.get_submission(first).unwrap();
+        // A change that cannot be applied: the trail has never made one.
+        let bogus = Committed {
+            seq: 2,
+            head: [0; 32],
+            time_ms: 0,
+            principal: String::new(),
+            policy_digest: None,
+            program_version: String::new(),
+            event: Event::Sealed(SubmissionId::random()),
+        };
+        store.inner.index.core.take_in(vec![(bogus, Vec::new())]);
+        let second = store.create_submission(&actor, new(2)).unwrap().id;
+        let unread = store.get_submission(second);
+        assert!(matches!(unread, Err(StoreError::IndexUnavailable { .. })));
+        store.rebuild_index().unwrap();
+        assert_eq!(store.get_submission(second).unwrap().state, State::Draft);
+        assert_eq!(store.get_submission(first).unwrap().state, State::Draft);
+        let third = store.create_submission(&actor, new(3)).unwrap().id;
+        assert_eq!(store.get_submission(third).unwrap().state, State::Draft);
+        assert_eq!(
+            store.index_fingerprint().unwrap(),
+            store.rebuilt_index_fingerprint().unwrap()
+        );
+        store.close().unwrap();
+        drop(store);
+        let store = Store::open(folder.path(), Options::default()).unwrap();
+        assert!(!store.index_was_rebuilt());
     }
 }

@@ -155,6 +155,11 @@ impl Upload {
         Ok(length)
     }
 
+    /// Lets go of the open file, so that an abandoned upload holds none.
+    pub(crate) fn rest(&mut self) {
+        self.file = None;
+    }
+
     /// BLAKE3 of what was written; from the file if it was not kept up.
     pub(crate) fn digest(&mut self) -> io::Result<Digest> {
         if self.hasher.is_none() {

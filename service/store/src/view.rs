@@ -120,6 +120,8 @@ pub struct SubmissionView {
     pub created_ms: u64,
     /// When it last changed, ms since 1970.
     pub updated_ms: u64,
+    /// Principal who last changed it.
+    pub updated_by: String,
     /// When it was sealed, ms since 1970.
     pub sealed_ms: Option<u64>,
     /// When its examination ended, ms since 1970.

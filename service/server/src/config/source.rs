@@ -125,5 +125,5 @@ fn written(value: &Spanned<DeValue<'_>>) -> Option<String> {
 
 fn line_of(text: &str, span: &Range<usize>) -> usize {
     let before = text.as_bytes().get(..span.start).unwrap_or(text.as_bytes());
-    1 + before.iter().filter(|byte| **byte == b'\n').count()
+    before.split(|byte| *byte == b'\n').count()
 }

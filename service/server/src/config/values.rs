@@ -122,7 +122,7 @@ mod tests {
     fn durations_need_a_unit_and_a_range() {
         let read = |word: &str| Seconds(1, 600).parser()(word);
         assert_eq!(read("1 s"), Ok(Duration::from_secs(1)));
-        assert_eq!(read("10min"), Ok(Duration::from_secs(600)));
+        assert_eq!(read("10min"), Ok(Duration::from_mins(10)));
         assert_eq!(read("1500 ms"), Ok(Duration::from_millis(1500)));
         for bad in [
             "15",

@@ -106,7 +106,7 @@ impl Service {
     ) -> Result<v1::ListSubmissionsResponse, Failure> {
         let core = &self.core;
         let state = wire::state_filter(request.state)
-            .ok_or_else(|| Failure::field("state", "not a known state"))?;
+            .map_err(|_| Failure::field("state", "not a known state"))?;
         let compound = names::optional_text("compound", request.compound)?;
         let key = names::optional_text("contributor_key", request.contributor_key)?;
         let mark = format!("submissions {state:?} {compound:?} {key:?}");

@@ -256,7 +256,7 @@ async fn a_full_queue_says_when_to_come_back() {
 #[tokio::test]
 async fn drafts_are_counted_per_principal() {
     let house = House::with(Fake::accepting(), |config| {
-        config.drafts_per_principal_max = 2
+        config.drafts_per_principal_max = 2;
     })
     .await;
     let packs = ["I", "II", "III"].map(|form| Pack::new("velnaric acid", form, -10.0));

@@ -24,7 +24,7 @@ use crate::support::{
 fn crashing(times: usize) -> (Arc<AtomicUsize>, Arc<dyn tarehouse_server::Examiner>) {
     let attempts = Arc::new(AtomicUsize::new(0));
     let counted = Arc::clone(&attempts);
-    let examiner = Fake::new(move |submission, policy, _| {
+    let examiner = Fake::judging(move |submission, policy, _| {
         let attempt = counted.fetch_add(1, Ordering::SeqCst);
         assert!(attempt >= times, "the examiner crashes as the test wishes");
         report(submission, policy, Verdict::Accept)

@@ -23,7 +23,7 @@ use tonic::{Code, Status};
 use tonic_types::StatusExt as _;
 
 /// Longest time that any wait of a test may take.
-pub(crate) const PATIENCE: Duration = Duration::from_secs(60);
+pub(crate) const PATIENCE: Duration = Duration::from_mins(1);
 
 type Judge = dyn Fn(&Submission, &Policy, &dyn Progress) -> Report + Send + Sync;
 
@@ -31,7 +31,7 @@ type Judge = dyn Fn(&Submission, &Policy, &dyn Progress) -> Report + Send + Sync
 pub(crate) struct Fake(Box<Judge>);
 
 impl Fake {
-    pub(crate) fn new(
+    pub(crate) fn judging(
         judge: impl Fn(&Submission, &Policy, &dyn Progress) -> Report + Send + Sync + 'static,
     ) -> Arc<dyn Examiner> {
         Arc::new(Self(Box::new(judge)))
@@ -39,13 +39,13 @@ impl Fake {
 
     /// Accepts everything at once.
     pub(crate) fn accepting() -> Arc<dyn Examiner> {
-        Self::new(|submission, policy, _| report(submission, policy, Verdict::Accept))
+        Self::judging(|submission, policy, _| report(submission, policy, Verdict::Accept))
     }
 
     /// Accepts everything once the gate is open.
     pub(crate) fn behind(gate: &Gate) -> Arc<dyn Examiner> {
         let gate = gate.clone();
-        Self::new(move |submission, policy, progress| {
+        Self::judging(move |submission, policy, progress| {
             progress.advance("waiting", 3, 7);
             gate.pass();
             report(submission, policy, Verdict::Accept)

@@ -66,6 +66,12 @@ async fn a_package_goes_from_draft_to_record() {
     assert_eq!(done.verdict(), v1::Verdict::Accept);
     while watch.message().await.unwrap().is_some() {}
 
+    check_record(&house, &draft, &done).await;
+    house.service.shutdown().await.unwrap();
+}
+
+/// Report and record of an accepted submission.
+async fn check_record(house: &House, draft: &v1::Submission, done: &v1::Submission) {
     let found = house.report(&draft.name).await.unwrap();
     let by_record = house.report(&done.record).await.unwrap();
     assert_eq!(found.encode_to_vec(), by_record.encode_to_vec());
@@ -94,12 +100,11 @@ async fn a_package_goes_from_draft_to_record() {
         "undeclared / undeclared / undeclared / undeclared"
     );
     assert!((record.bracket_half_width_kj_per_mol.unwrap() - 0.2).abs() < 1e-9);
-    house.service.shutdown().await.unwrap();
 }
 
 #[tokio::test]
 async fn verdicts_lead_to_their_states() {
-    let house = House::new(Fake::new(|submission, policy, _| {
+    let house = House::new(Fake::judging(|submission, policy, _| {
         let verdict = match submission.identity.form.as_str() {
             "hold" => Verdict::Hold,
             _ => Verdict::Reject,

@@ -216,6 +216,7 @@ fn put(
     mut row: SubmissionRow,
 ) -> Step<()> {
     row.updated_ms = change.time_ms;
+    row.updated_by.clone_from(&change.principal);
     row.revision = change.seq;
     tx.insert(keys::submission(id), row.encode_to_vec())?;
     Ok(())

@@ -27,6 +27,9 @@ pub(crate) struct Window {
 
 type Answer<T> = Result<T, String>;
 
+/// A key and its value.
+type Pair = (Vec<u8>, Vec<u8>);
+
 fn words(error: impl std::fmt::Display) -> String {
     error.to_string()
 }
@@ -155,8 +158,12 @@ fn range(
     prefix: &[u8],
     backwards: bool,
     after: Option<&[u8]>,
-) -> Box<dyn Iterator<Item = Answer<(Vec<u8>, Vec<u8>)>>> {
+) -> Box<dyn Iterator<Item = Answer<Pair>>> {
     use std::ops::Bound::{Excluded, Included};
+    if after.is_some_and(|after| !after.starts_with(prefix)) {
+        // A made-up token must not lead into another list.
+        return Box::new(std::iter::empty());
+    }
     let low = prefix.to_vec();
     // Keys under a prefix end before the prefix with its last byte raised; no prefix here ends in 255.
     let mut high = prefix.to_vec();

@@ -67,6 +67,8 @@ pub(crate) struct SubmissionRow {
     pub(crate) supersedes: Option<Vec<u8>>,
     #[prost(bytes = "vec", optional, tag = "23")]
     pub(crate) superseded_by: Option<Vec<u8>>,
+    #[prost(string, tag = "24")]
+    pub(crate) updated_by: String,
 }
 
 #[derive(Clone, PartialEq, Message)]
@@ -178,6 +180,7 @@ impl SubmissionRow {
             arrays,
             created_ms: self.created_ms,
             updated_ms: self.updated_ms,
+            updated_by: self.updated_by,
             sealed_ms: self.sealed_ms,
             examined_ms: self.examined_ms,
             revision: self.revision,

@@ -11,9 +11,10 @@ use tarehouse_assay::submission::Digest;
 
 use super::{Core, Inner, Options, Shared, Store};
 use crate::disk::{Disk, Held, OpenMode};
-use crate::error::OpenError;
+use crate::error::{OpenError, TrailDamage};
 use crate::event::Event;
-use crate::index::{self, Change, Opening, clean};
+use crate::index::clean::{self, CleanMark};
+use crate::index::{self, Change, Opening};
 use crate::keylock::KeyLocks;
 use crate::ledger::Ledger;
 use crate::object::Objects;
@@ -35,38 +36,34 @@ struct Walked {
     hash_at_anchor: Option<Digest>,
 }
 
+/// The trail, checked against its anchor and settled.
+struct Checked {
+    walked: Walked,
+    mark: Mark,
+    damage: Option<TrailDamage>,
+    anchor_counter: u64,
+    clean: Option<CleanMark>,
+    clean_stop: bool,
+}
+
+/// Says what failed in a store.
+fn failure(root: &Path, doing: &'static str) -> impl FnOnce(io::Error) -> OpenError {
+    let path = root.to_path_buf();
+    move |source| OpenError::Io {
+        doing,
+        path,
+        source,
+    }
+}
+
 pub(super) fn open(root: PathBuf, options: Options) -> Result<Store, OpenError> {
     let disk = Arc::clone(&options.disk);
     let lock = prepare(disk.as_ref(), &root)?;
-    let failed = |doing: &'static str| {
-        let path = root.clone();
-        move |source: io::Error| OpenError::Io {
-            doing,
-            path,
-            source,
-        }
-    };
-    let reading = anchor::read(disk.as_ref(), &root).map_err(failed("reading the anchor"))?;
-    let mut walked = walk(disk.as_ref(), &root, &reading)?;
-    let counter = scan::compare_with_anchor(reading, &walked.scan, walked.hash_at_anchor)?;
-    let damage = match &walked.scan.ending {
-        Ending::Damaged(damage) => Some(damage.clone()),
-        Ending::Whole | Ending::Torn { .. } => None,
-    };
-    scan::cut_tail(disk.as_ref(), &root, &mut walked.scan)?;
-    let mark = Mark {
-        seq: walked.scan.last_seq,
-        head: walked.scan.head,
-    };
-    let clean = match &damage {
-        Some(_) => None,
-        None => clean::take(disk.as_ref(), &index::folder(&root))
-            .map_err(failed("reading the clean mark"))?,
-    };
+    let mut checked = check_trail(disk.as_ref(), &root)?;
+    let mark = checked.mark;
     let objects = Objects::new(Arc::clone(&disk), &root);
-    let clean_stop = clean.as_ref().is_some_and(|clean| clean.mark == mark);
-    let missing = check_objects(&objects, &walked, clean_stop, &options)
-        .map_err(failed("looking for objects"))?;
+    let missing = check_objects(&objects, &checked, &options)
+        .map_err(failure(&root, "looking for objects"))?;
     if !missing.is_empty() && !options.tolerate_missing_objects {
         return Err(OpenError::ObjectsMissing { missing });
     }
@@ -77,31 +74,26 @@ pub(super) fn open(root: PathBuf, options: Options) -> Result<Store, OpenError> 
         open_limit: options.index_open_limit,
         cache_bytes: options.index_cache_bytes,
     };
+    let clean = checked.clean.take();
     let (index, changes) = opening.open(clean, &|take| replay(disk.as_ref(), &root, take))?;
-    if damage.is_none() {
-        clear(disk.as_ref(), &root, &walked.ledger).map_err(failed("clearing up"))?;
+    if checked.damage.is_none() {
+        clear(disk.as_ref(), &root, &checked.walked.ledger)
+            .map_err(failure(&root, "clearing up"))?;
     }
     let shared = Arc::new(Shared {
         core: Mutex::new(Core {
-            ledger: walked.ledger,
+            ledger: std::mem::take(&mut checked.walked.ledger),
             head: mark.head,
             ..Core::default()
         }),
         ..Shared::default()
     });
-    let writer = match &damage {
-        Some(damage) => {
-            tracing::error!(?damage, "the trail is damaged; the store is read-only");
-            None
-        }
-        None => {
-            let anchor = Anchor::open(disk.as_ref(), &root, counter, &mark)
-                .map_err(failed("writing the anchor"))?;
-            let tail = tail(disk.as_ref(), &root, &walked.scan, &options)?;
-            let sink = sink(Arc::clone(&shared), changes);
-            let started = Writer::start(Arc::clone(&disk), tail, anchor, sink);
-            Some(started.map_err(failed("starting the trail"))?)
-        }
+    let writer = if let Some(damage) = &checked.damage {
+        tracing::error!(?damage, "the trail is damaged; the store is read-only");
+        None
+    } else {
+        let sink = sink(Arc::clone(&shared), changes);
+        Some(start_writer(&root, &checked, &options, sink)?)
     };
     let inner = Inner {
         uploads: Uploads::new(Arc::clone(&disk), &root),
@@ -112,7 +104,7 @@ pub(super) fn open(root: PathBuf, options: Options) -> Result<Store, OpenError> 
         keys: KeyLocks::default(),
         writer,
         index,
-        damage,
+        damage: checked.damage,
         missing,
         closed: AtomicBool::new(false),
         lock: Mutex::new(Some(lock)),
@@ -120,6 +112,52 @@ pub(super) fn open(root: PathBuf, options: Options) -> Result<Store, OpenError> 
     Ok(Store {
         inner: Arc::new(inner),
     })
+}
+
+/// Walks the trail, compares it with its anchor and settles its end.
+fn check_trail(disk: &dyn Disk, root: &Path) -> Result<Checked, OpenError> {
+    let reading = anchor::read(disk, root).map_err(failure(root, "reading the anchor"))?;
+    let mut walked = walk(disk, root, &reading)?;
+    let anchor_counter = scan::compare_with_anchor(reading, &walked.scan, walked.hash_at_anchor)?;
+    let mark = Mark {
+        seq: walked.scan.last_seq,
+        head: walked.scan.head,
+    };
+    let damage = match &walked.scan.ending {
+        Ending::Damaged(damage) => Some(damage.clone()),
+        Ending::Whole | Ending::Torn { .. } => None,
+    };
+    let clean = match &damage {
+        Some(_) => None,
+        None => clean::take(disk, &index::folder(root))
+            .map_err(failure(root, "reading the clean mark"))?,
+    };
+    let clean_stop = clean.as_ref().is_some_and(|clean| clean.mark == mark);
+    if damage.is_none() {
+        scan::settle_tail(disk, root, &mut walked.scan, clean_stop)?;
+    }
+    Ok(Checked {
+        walked,
+        mark,
+        damage,
+        anchor_counter,
+        clean,
+        clean_stop,
+    })
+}
+
+/// Starts the thread that writes the trail.
+fn start_writer(
+    root: &Path,
+    checked: &Checked,
+    options: &Options,
+    sink: Sink,
+) -> Result<Writer, OpenError> {
+    let disk = &options.disk;
+    let anchor = Anchor::open(disk.as_ref(), root, checked.anchor_counter, &checked.mark)
+        .map_err(failure(root, "writing the anchor"))?;
+    let tail = tail(disk.as_ref(), root, &checked.walked.scan, options)?;
+    Writer::start(Arc::clone(disk), tail, anchor, sink).map_err(failure(root, "starting the trail"))
 }
 
 /// Makes the folders and takes the lock.
@@ -193,11 +231,11 @@ fn walk(disk: &dyn Disk, root: &Path, reading: &anchor::Reading) -> Result<Walke
 /// Says which objects are missing; after a clean stop only those of the segment that was being written.
 fn check_objects(
     objects: &Objects,
-    walked: &Walked,
-    clean_stop: bool,
+    checked: &Checked,
     options: &Options,
 ) -> io::Result<Vec<String>> {
-    let from = if clean_stop && !options.tolerate_missing_objects {
+    let walked = &checked.walked;
+    let from = if checked.clean_stop && !options.tolerate_missing_objects {
         walked.scan.active_first_seq
     } else {
         0
@@ -268,23 +306,16 @@ fn sink(shared: Arc<Shared>, changes: SyncSender<Change>) -> Sink {
     Box::new(move |committed| {
         let states = {
             let mut core = shared.lock();
-            match core.ledger.apply(committed.seq, &committed.event) {
-                Ok(states) => {
-                    core.head = committed.head;
-                    states
-                }
-                Err(why) => {
-                    tracing::error!(%why, "a decided change does not follow from the trail");
-                    core.astray.get_or_insert(why);
-                    Vec::new()
-                }
-            }
+            let states = core.ledger.apply(committed.seq, &committed.event)?;
+            core.head = committed.head;
+            states
         };
         if states.iter().any(|(_, state)| *state == State::Queued) {
             shared.queued.notify_all();
         }
         // A closed channel means that the index thread is gone; the trail goes on.
         let _ = changes.send((committed, states));
+        Ok(())
     })
 }
 
@@ -310,6 +341,34 @@ fn clear(disk: &dyn Disk, root: &Path, ledger: &Ledger) -> io::Result<()> {
         }
     }
     Ok(())
+}
+
+/// Builds the index anew from the trail while the store runs.
+pub(super) fn rebuild_index(inner: &Inner) -> Result<(), OpenError> {
+    let trail = {
+        let core = inner.shared.lock();
+        Mark {
+            seq: core.ledger.last_seq,
+            head: core.head,
+        }
+    };
+    let opening = Opening {
+        disk: inner.disk(),
+        root: &inner.root,
+        trail,
+        open_limit: inner.options.index_open_limit,
+        cache_bytes: inner.options.index_cache_bytes,
+    };
+    // Frames behind the last durable one may be cut again: they come through the applier, if at all.
+    inner.index.rebuild(&opening, trail.seq, &|take| {
+        replay(inner.disk(), &inner.root, &mut |change| {
+            if change.seq <= trail.seq {
+                take(change)
+            } else {
+                Ok(())
+            }
+        })
+    })
 }
 
 /// Digest of an index built from the trail just now, in a folder that is removed again.

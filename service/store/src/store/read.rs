@@ -146,6 +146,15 @@ impl Store {
         }
     }
 
+    /// Builds the index anew from the trail, for when it has failed while the trail goes on (a full disk does that).
+    /// Reads wait meanwhile.
+    ///
+    /// # Errors
+    /// [`OpenError::Index`], or what is wrong with the trail; the index is as before.
+    pub fn rebuild_index(&self) -> Result<(), OpenError> {
+        super::open::rebuild_index(&self.inner)
+    }
+
     /// One digest over everything in the index; two indexes with the same content have the same.
     ///
     /// # Errors

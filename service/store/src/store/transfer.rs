@@ -46,7 +46,7 @@ impl Store {
         let mut upload = hold(&upload);
         // It may have been finished while this call waited.
         inner.expected(id, name)?;
-        inner.alive(&upload, id, name)?;
+        alive(&upload, id, name)?;
         let end = offset.saturating_add(bytes.len() as u64);
         if offset != upload.length() {
             return Err(StoreError::WrongOffset {
@@ -90,9 +90,8 @@ impl Store {
             let (_, declared, stored) = inner.declared(id, name)?;
             return Ok(status(declared.size, stored));
         }
-        let committed = upload
-            .sync()
-            .map_err(|error| inner.poisoned_by("syncing an array", &error))?;
+        let committed = inner.sync_upload(&mut upload)?;
+        upload.rest();
         Ok(status(committed, false))
     }
 
@@ -161,7 +160,7 @@ impl Store {
         inner.expected(id, name)?;
         let upload = inner.upload(id, name)?;
         let mut upload = hold(&upload);
-        inner.alive(&upload, id, name)?;
+        alive(&upload, id, name)?;
         upload
             .discard()
             .map_err(|error| StoreError::io("dropping a partial array", error))
@@ -170,6 +169,17 @@ impl Store {
 
 fn hold(upload: &Arc<Mutex<Upload>>) -> MutexGuard<'_, Upload> {
     upload.lock().unwrap_or_else(PoisonError::into_inner)
+}
+
+/// Fails if an upload is over.
+fn alive(upload: &Upload, id: SubmissionId, name: &str) -> Result<(), StoreError> {
+    if upload.done || upload.adopted {
+        return Err(StoreError::AlreadyStored {
+            id,
+            name: name.to_owned(),
+        });
+    }
+    Ok(())
 }
 
 impl Inner {
@@ -214,16 +224,6 @@ impl Inner {
             .map_err(|error| StoreError::io("opening a partial array", error))
     }
 
-    fn alive(&self, upload: &Upload, id: SubmissionId, name: &str) -> Result<(), StoreError> {
-        if upload.done || upload.adopted {
-            return Err(StoreError::AlreadyStored {
-                id,
-                name: name.to_owned(),
-            });
-        }
-        Ok(())
-    }
-
     /// Compares what arrived with what was declared and makes it an object.
     fn promote(&self, upload: &mut Upload, declared: &DeclaredArray) -> Result<(), StoreError> {
         let name = || declared.name.clone();
@@ -236,9 +236,7 @@ impl Inner {
         }
         let reading = |error| StoreError::io("reading a partial array", error);
         upload.settle().map_err(reading)?;
-        upload
-            .sync()
-            .map_err(|error| self.poisoned_by("syncing an array", &error))?;
+        self.sync_upload(upload)?;
         if upload.length() > declared.size || upload.digest().map_err(reading)? != declared.digest {
             upload
                 .discard()
@@ -250,6 +248,15 @@ impl Inner {
             .map_err(|error| self.refused(error))?;
         upload.adopted = true;
         Ok(())
+    }
+
+    /// Makes what arrived durable. After a failure nobody knows what of it is on the disk, so all of it is dropped: a
+    /// later sync, even in a new process, might succeed without writing it.
+    fn sync_upload(&self, upload: &mut Upload) -> Result<u64, StoreError> {
+        upload.sync().map_err(|error| {
+            let _ = upload.discard();
+            self.poisoned_by("syncing an array", &error)
+        })
     }
 
     /// Drops a partial upload for good; what cannot be removed now is removed at the next start.

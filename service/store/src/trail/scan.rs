@@ -195,30 +195,73 @@ pub(crate) fn compare_with_anchor(
     }
 }
 
-/// Cuts what an interrupted write left behind; returns the active segment, if one is left.
-pub(crate) fn cut_tail(disk: &dyn Disk, root: &Path, scan: &mut Scan) -> Result<(), OpenError> {
-    let Ending::Torn {
+/// Cuts what an interrupted write left behind, and makes durable what was only read from the cache.
+///
+/// After an unclean stop the last segment may hold frames that were never synced, or whose sync failed; the system may
+/// then take its cached pages for written although they are not. So the segment is written anew, from the bytes that
+/// were verified, and put in the old one's place; where there is no space for that, it is synced as it is.
+pub(crate) fn settle_tail(
+    disk: &dyn Disk,
+    root: &Path,
+    scan: &mut Scan,
+    clean_stop: bool,
+) -> Result<(), OpenError> {
+    let folder = segment::folder(root);
+    if let Ending::Torn {
         path,
         good_length,
         detail,
     } = &scan.ending
-    else {
+    {
+        tracing::warn!(segment = %path.display(), offset = good_length, %detail, "cutting a torn tail");
+        if *good_length < HEADER as u64 {
+            let removed = disk.remove_file(path);
+            removed
+                .and_then(|()| disk.sync_dir(&folder))
+                .map_err(|source| OpenError::Io {
+                    doing: "removing a torn segment",
+                    path: path.clone(),
+                    source,
+                })?;
+        }
+        scan.ending = Ending::Whole;
+    } else if clean_stop {
+        return Ok(());
+    }
+    let Some((path, length)) = &scan.active else {
         return Ok(());
     };
-    tracing::warn!(segment = %path.display(), offset = good_length, %detail, "cutting a torn tail");
-    let failed = |source| OpenError::Io {
-        doing: "cutting a torn tail",
-        path: path.clone(),
-        source,
-    };
-    if *good_length < HEADER as u64 {
-        disk.remove_file(path).map_err(failed)?;
-        disk.sync_dir(&segment::folder(root)).map_err(failed)?;
-    } else {
-        let mut file = disk.open(path, OpenMode::Keep).map_err(failed)?;
-        file.set_len(*good_length).map_err(failed)?;
-        file.sync().map_err(failed)?;
+    rewrite(disk, &folder, path, *length)
+        .or_else(|error| {
+            if disk::is_no_space(&error) {
+                sync_in_place(disk, &folder, path, *length)
+            } else {
+                Err(error)
+            }
+        })
+        .map_err(|source| OpenError::Io {
+            doing: "settling the last segment",
+            path: path.clone(),
+            source,
+        })
+}
+
+fn rewrite(disk: &dyn Disk, folder: &Path, path: &Path, length: u64) -> io::Result<()> {
+    let mut bytes = disk::read_file(disk, path, SEGMENT_BYTES_MAX)?;
+    bytes.truncate(usize::try_from(length).map_err(io::Error::other)?);
+    let fresh = folder.join("settling");
+    let mut file = disk.open(&fresh, OpenMode::Fresh)?;
+    disk::write_all(file.as_mut(), 0, &bytes)?;
+    file.sync()?;
+    disk.rename(&fresh, path)?;
+    disk.sync_dir(folder)
+}
+
+fn sync_in_place(disk: &dyn Disk, folder: &Path, path: &Path, length: u64) -> io::Result<()> {
+    let mut file = disk.open(path, OpenMode::Keep)?;
+    if file.length()? > length {
+        file.set_len(length)?;
     }
-    scan.ending = Ending::Whole;
-    Ok(())
+    file.sync()?;
+    disk.sync_dir(folder)
 }

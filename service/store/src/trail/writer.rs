@@ -51,8 +51,9 @@ pub(crate) enum CommitError {
     Closed,
 }
 
-/// Called with changes in order, after they are durable and before they are answered for.
-pub(crate) type Sink = Box<dyn FnMut(Committed) + Send>;
+/// Called with changes in order, after they are durable and before they are answered for. An error says that a change
+/// does not follow from those before it, and stops the trail.
+pub(crate) type Sink = Box<dyn FnMut(Committed) -> Result<(), String> + Send>;
 
 /// Where the writer goes on.
 #[derive(Debug)]
@@ -65,9 +66,12 @@ pub(crate) struct Tail {
     pub(crate) segment_bytes_max: u64,
 }
 
+/// A proposal and where its answer goes.
+type Waiting = (Proposal, SyncSender<Result<u64, CommitError>>);
+
 #[derive(Debug, Default)]
 struct Queue {
-    waiting: VecDeque<(Proposal, SyncSender<Result<u64, CommitError>>)>,
+    waiting: VecDeque<Waiting>,
     closed: bool,
     poisoned: Option<String>,
 }
@@ -94,6 +98,12 @@ struct Pen {
 
 fn lock<T>(mutex: &Mutex<T>) -> std::sync::MutexGuard<'_, T> {
     mutex.lock().unwrap_or_else(PoisonError::into_inner)
+}
+
+fn poison(shared: &Shared, why: &str) {
+    lock(&shared.queue)
+        .poisoned
+        .get_or_insert_with(|| why.to_owned());
 }
 
 impl Writer {
@@ -140,9 +150,7 @@ impl Writer {
 
     /// Takes no more changes, for a reason found elsewhere.
     pub(crate) fn poison(&self, why: &str) {
-        lock(&self.shared.queue)
-            .poisoned
-            .get_or_insert_with(|| why.to_owned());
+        poison(&self.shared, why);
     }
 
     /// Why no more changes are taken.
@@ -210,13 +218,9 @@ fn run(shared: &Shared, mut pen: Pen) {
     if lock(&shared.queue).poisoned.is_none()
         && let Err(error) = pen.anchor.sync()
     {
-        lock(&shared.queue)
-            .poisoned
-            .get_or_insert_with(|| format!("syncing the anchor: {error}"));
+        poison(shared, &format!("syncing the anchor: {error}"));
     }
 }
-
-type Waiting = (Proposal, SyncSender<Result<u64, CommitError>>);
 
 impl Pen {
     /// Writes as much of the batch as fits one sync, and answers.
@@ -246,7 +250,7 @@ impl Pen {
             let (encoded, hash) = frame.encode(&head);
             bytes.extend_from_slice(&encoded);
             head = hash;
-            written.push((seq, hash, proposal, reply));
+            written.push((seq, hash, (proposal, reply)));
             if bytes.len() > BATCH_BYTES_MAX {
                 break;
             }
@@ -259,14 +263,12 @@ impl Pen {
             Err(error) => {
                 if let CommitError::Poisoned(why) = &error {
                     tracing::error!(%why, "the trail takes no more changes");
-                    lock(&shared.queue)
-                        .poisoned
-                        .get_or_insert_with(|| why.clone());
+                    poison(shared, why);
                 }
                 let late = batch.drain(..).map(|(_, reply)| reply);
                 for reply in written
                     .into_iter()
-                    .map(|(_, _, _, reply)| reply)
+                    .map(|(_, _, (_, reply))| reply)
                     .chain(late)
                 {
                     let _ = reply.send(Err(error.clone()));
@@ -278,7 +280,7 @@ impl Pen {
     fn answer(
         &mut self,
         shared: &Shared,
-        written: Vec<(u64, Digest, Proposal, SyncSender<Result<u64, CommitError>>)>,
+        written: Vec<(u64, Digest, Waiting)>,
         seq: u64,
         head: Digest,
     ) {
@@ -286,8 +288,8 @@ impl Pen {
         self.tail.head = head;
         let due = self.anchor.advance(&Mark { seq, head });
         let mut replies = Vec::with_capacity(written.len());
-        for (seq, head, proposal, reply) in written {
-            (self.sink)(Committed {
+        for (seq, head, (proposal, reply)) in written {
+            let taken = (self.sink)(Committed {
                 seq,
                 head,
                 time_ms: proposal.time_ms,
@@ -296,18 +298,20 @@ impl Pen {
                 program_version: proposal.program_version,
                 event: proposal.event,
             });
-            replies.push((reply, seq));
+            if let Err(why) = &taken {
+                tracing::error!(%why, "a decided change does not follow from the trail");
+                poison(shared, why);
+            }
+            replies.push((reply, taken.map(|()| seq).map_err(CommitError::Poisoned)));
         }
-        for (reply, seq) in replies {
-            let _ = reply.send(Ok(seq));
+        for (reply, answer) in replies {
+            let _ = reply.send(answer);
         }
         match due {
             Ok(false) => {}
             Ok(true) => {
                 if let Err(error) = self.anchor.sync() {
-                    lock(&shared.queue)
-                        .poisoned
-                        .get_or_insert_with(|| format!("syncing the anchor: {error}"));
+                    poison(shared, &format!("syncing the anchor: {error}"));
                 }
             }
             // The anchor lags, which is safe; the next write tries again.
