@@ -119,13 +119,19 @@ pub async fn in_session<T>(
 ) -> Result<T, Failure> {
     let interrupt = context.interrupt.clone();
     let is_local = matches!(target, Target::Local(_));
-    let session = tokio::select! {
-        session = Session::open(target) => session?,
-        () = interrupt.clone().raised() => return Err(interrupted(note)),
+    let session = if is_local {
+        // A store that is being opened cannot be let go half-way: another process would find it in use.
+        Session::open(target).await?
+    } else {
+        tokio::select! {
+            session = Session::open(target) => session?,
+            () = interrupt.clone().raised() => return Err(interrupted(note)),
+        }
     };
     let done = tokio::select! {
-        done = work(&session, context) => done,
+        biased;
         () = interrupt.raised() => Err(interrupted(note)),
+        done = work(&session, context) => done,
     };
     if is_local && matches!(done, Err(Failure::Interrupted { .. })) {
         context
