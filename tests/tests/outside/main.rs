@@ -28,11 +28,19 @@ mod service;
 #[cfg(test)]
 mod service_closed_forms;
 #[cfg(test)]
+mod service_eigen;
+#[cfg(test)]
+mod service_gamma;
+#[cfg(test)]
 mod service_metals;
 #[cfg(test)]
 mod service_moments;
 #[cfg(test)]
 mod service_supercells;
+#[cfg(test)]
+mod tight_binding;
+#[cfg(test)]
+mod tight_binding_verdicts;
 #[cfg(test)]
 mod units;
 #[cfg(test)]
