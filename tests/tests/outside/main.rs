@@ -10,6 +10,10 @@ mod debye;
 #[cfg(test)]
 mod gas_molecules;
 #[cfg(test)]
+mod identities;
+#[cfg(test)]
+mod identities_of_reports;
+#[cfg(test)]
 mod large;
 #[cfg(test)]
 mod lattices;
@@ -19,6 +23,8 @@ mod limits;
 mod metals;
 #[cfg(test)]
 mod oscillator;
+#[cfg(test)]
+mod projections;
 #[cfg(test)]
 mod real_packages;
 #[cfg(test)]

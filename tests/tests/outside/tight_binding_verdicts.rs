@@ -1,11 +1,9 @@
 //! Verdicts and tags of real packages under the built-in policy, against what is known of them (`fixtures/README.md`):
 //! energies along the displaced pattern in the same or a larger supercell say which soft modes are real.
 
-use nalgebra::Vector3;
 use rayon::prelude::*;
 use tarehouse_assay::report::{SoftMode, Strength, Tag, Verdict};
 use tarehouse_assay::{Policy, Report, Unwatched, examine, projected_constants};
-use tarehouse_physics::units::wavenumber_per_cm;
 
 use crate::service::dynamics_of;
 use crate::tight_binding::{at_gamma, submission};
@@ -90,25 +88,20 @@ fn rounded_forces_leave_no_strong_claim_of_an_instability() {
 #[test]
 fn true_instability_of_an_expanded_cell_is_possibly_physical_at_gamma() {
     let [(name, report)] = reports(&[("nh3-expanded", &[Hold])]).try_into().unwrap();
-    let physical = report
-        .soft_modes
-        .iter()
-        .find(|m| m.tag == Tag::PossiblyPhysical);
-    let physical = physical.unwrap();
-    assert!(
-        physical.commensurate && physical.lowest_wavenumber_per_cm < -38.0,
-        "{name}"
-    );
+    assert!(!report.soft_modes.is_empty());
+    // Every soft point belongs to a cluster, and so does Γ, which is soft: see below.
+    for mode in &report.soft_modes {
+        assert_eq!(mode.tag, Tag::PossiblyPhysical, "{name} at {:?}", mode.q);
+        assert!(mode.commensurate && mode.lowest_wavenumber_per_cm < -38.0);
+    }
     assert!(report.free_energy.iter().all(|f| !f.defined));
-    // The supercell is 2×1×1. Of its two wave vectors it is Γ that is soft: known are −40 and, in 2×2×2, −38 cm⁻¹.
+    // Known are −40 and, in 2×2×2, −38 cm⁻¹.
     let submission = submission(name);
     let constants = projected_constants(&submission, &Policy::built_in().unwrap());
     let dynamics = dynamics_of(&submission.crystal, &constants);
     let (_, optical) = at_gamma(&dynamics);
     let lowest = optical.into_iter().fold(f64::INFINITY, f64::min);
     assert!((-46.0..-36.0).contains(&lowest), "{lowest}");
-    let boundary = dynamics.eigenvalues(&Vector3::new(0.5, 0.0, 0.0)).unwrap()[0];
-    assert!(wavenumber_per_cm(boundary) > 0.0);
 }
 
 #[test]
