@@ -151,7 +151,11 @@ impl Case {
             let apart = end - position;
             if op.permutation[j] == image_j && apart.iter().all(|x| (x - x.round()).abs() < 1e-6) {
                 let whole = [apart.x.round(), apart.y.round(), apart.z.round()];
-                let whole = whole.map(|x| (-99_i32..99).find(|k| f64::from(*k) == x).unwrap());
+                let whole = whole.map(|x| {
+                    (-99_i32..99)
+                        .find(|k| (f64::from(*k) - x).abs() < 0.5)
+                        .unwrap()
+                });
                 return (
                     self.supercell.index_of(&whole.map(i64::from)),
                     image_i,

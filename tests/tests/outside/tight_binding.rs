@@ -74,16 +74,12 @@ fn sums_and_asymmetry(constants: &ForceConstants) -> [f64; 3] {
     let mut displaced = vec![Matrix3::<f64>::zeros(); n];
     let mut response = vec![Matrix3::<f64>::zeros(); n];
     let mut asymmetry = 0.0_f64;
-    for cell in 0..supercell.cell_count() {
-        for i in 0..n {
-            for j in 0..n {
-                let block = constants.block(cell, i, j);
-                let partner = constants.block(supercell.negative(cell), j, i);
-                displaced[j] += block;
-                response[i] += block;
-                asymmetry = asymmetry.max((block - partner.transpose()).amax());
-            }
-        }
+    for (flat, block) in constants.blocks().iter().enumerate() {
+        let (cell, i, j) = (flat / (n * n), flat / n % n, flat % n);
+        let partner = constants.block(supercell.negative(cell), j, i);
+        displaced[j] += block;
+        response[i] += block;
+        asymmetry = asymmetry.max((block - partner.transpose()).amax());
     }
     let largest = |sums: &[Matrix3<f64>]| sums.iter().map(Matrix3::amax).fold(0.0, f64::max);
     [largest(&displaced), largest(&response), asymmetry]
