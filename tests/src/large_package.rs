@@ -64,7 +64,7 @@ const CAGE: [[i32; 3]; 30] = [
 const TETRAHEDRON: [[i32; 3]; 4] = [[1, 1, 1], [1, -1, -1], [-1, 1, -1], [-1, -1, 1]];
 /// Bond lengths carbon–carbon, carbon–hydrogen, carbon–fluorine, Å; common chemistry.
 const BOND_LENGTHS_ANG: [f64; 3] = [1.54, 1.09, 1.36];
-/// Every how manyeth dangling bond ends in fluorine.
+/// One dangling bond in so many ends in fluorine.
 const FLUORINE_EVERY: usize = 9;
 
 /// Good enough for few soft modes: residual forces far below what a calculation leaves.
@@ -94,7 +94,7 @@ pub fn compound() -> Result<Compound, ModelError> {
                 Some(_) => {}
                 None => {
                     let out = (place(neighbour) - place(site)).normalize();
-                    let fluorine = (sites.len() - CAGE.len()) % FLUORINE_EVERY == 0;
+                    let fluorine = (sites.len() - CAGE.len()).is_multiple_of(FLUORINE_EVERY);
                     let (symbol, length, radius, depth, charge) = if fluorine {
                         ("F", fluorine_bond, 1.55, 0.0080, -0.08)
                     } else {

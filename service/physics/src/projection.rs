@@ -104,7 +104,8 @@ pub struct RotationProjection {
 /// B inside the range of T, Q and G: solves (ρ P ρᵀ) μ = ρ A for the multipliers μ and returns A − P ρᵀ μ, with P the
 /// joint projector of T, Q and G and A already projected by it.
 ///
-/// Stops when ρ has fallen to `relative_tolerance` of its size, or after `steps_max` steps. Cost per step as `projected`.
+/// Stops when ρ has fallen to `relative_tolerance` of its size or to its own rounding, or after `steps_max` steps. Cost
+/// per step as `projected`.
 pub fn rotation_free(
     constants: &ForceConstants,
     group: &SpaceGroup,
@@ -117,12 +118,13 @@ pub fn rotation_free(
     let start = projected(constants, group);
     let target = rotation.apply(&start);
     let scale = norm(&target);
+    let least = (relative_tolerance * scale).max(rotation.rounding(&start));
     let mut multipliers = vec![Vector3::zeros(); target.len()];
     let (mut residual, mut steps) = (target.clone(), 0);
     let mut preconditioned = rotation.precondition(&residual);
     let mut direction = preconditioned.clone();
     let mut product = dot(&residual, &preconditioned);
-    while norm(&residual) > relative_tolerance * scale && steps < steps_max && product > 0.0 {
+    while norm(&residual) > least && steps < steps_max && product > 0.0 {
         let spread = projected(&rotation.transposed(&direction, constants), group);
         let image = rotation.apply(&spread);
         let curvature = dot(&direction, &image);
@@ -213,6 +215,17 @@ impl RotationSum {
             }
         }
         sums
+    }
+
+    /// Size of the rounding errors in ρ: below it lies nothing to be removed, and the equations have no solution.
+    fn rounding(&self, constants: &ForceConstants) -> f64 {
+        /// Rounding errors of a sum of products, in units of the root of the sum of their squares.
+        const MULTIPLE: f64 = 8.0;
+        let pairs = constants.blocks().iter().zip(&self.separations);
+        let squares: f64 = pairs
+            .map(|(block, x)| block.norm_squared() * x.norm_squared())
+            .sum();
+        MULTIPLE * f64::EPSILON * squares.sqrt()
     }
 
     fn transposed(&self, sums: &[Vector3<f64>], like: &ForceConstants) -> ForceConstants {

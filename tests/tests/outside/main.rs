@@ -10,6 +10,10 @@ mod debye;
 #[cfg(test)]
 mod gas_molecules;
 #[cfg(test)]
+mod identities;
+#[cfg(test)]
+mod identities_of_reports;
+#[cfg(test)]
 mod large;
 #[cfg(test)]
 mod lattices;
@@ -20,6 +24,8 @@ mod metals;
 #[cfg(test)]
 mod oscillator;
 #[cfg(test)]
+mod projections;
+#[cfg(test)]
 mod real_packages;
 #[cfg(test)]
 mod reference;
@@ -28,11 +34,19 @@ mod service;
 #[cfg(test)]
 mod service_closed_forms;
 #[cfg(test)]
+mod service_eigen;
+#[cfg(test)]
+mod service_gamma;
+#[cfg(test)]
 mod service_metals;
 #[cfg(test)]
 mod service_moments;
 #[cfg(test)]
 mod service_supercells;
+#[cfg(test)]
+mod tight_binding;
+#[cfg(test)]
+mod tight_binding_verdicts;
 #[cfg(test)]
 mod units;
 #[cfg(test)]

@@ -32,6 +32,9 @@ fn packages() -> Vec<(String, Package)> {
     let mut packages = Vec::new();
     for entry in std::fs::read_dir(folder).unwrap() {
         let entry = entry.unwrap();
+        if !entry.path().is_dir() {
+            continue;
+        }
         let text = std::fs::read_to_string(entry.path().join("package.toml")).unwrap();
         let name = entry.file_name().into_string().unwrap();
         packages.push((name, toml::from_str(&text).unwrap()));
