@@ -9,39 +9,21 @@
 //! dynamical matrix is known exactly at every wave vector. Compounds, names and numbers are invented; no potential here
 //! describes a real substance.
 
-pub mod potential;
-
 pub mod compound;
-
-pub mod symmetry;
-
-pub mod molecular_crystal;
-
-pub mod relax;
-
-pub mod packing;
-
 pub mod constants;
-
-pub mod folded;
-
-pub mod harmonic;
-
-pub mod runs;
-
-pub mod noise;
-
 pub mod contribution;
-
-pub mod package;
-
-mod manifest;
-
-mod npy;
-
+pub mod folded;
 pub mod forms;
-
+pub mod harmonic;
+pub mod molecular_crystal;
+pub mod noise;
+pub mod package;
+pub mod packing;
+pub mod potential;
+pub mod relax;
+pub mod runs;
 pub mod scenario;
+pub mod symmetry;
 
 pub use compound::Compound;
 pub use constants::RealSpaceConstants;

@@ -83,6 +83,9 @@ fn report() -> Report {
             ..Noise::default()
         }),
         soft_modes: vec![cluster()],
+        bracket_parts: None,
+        free_energy_draws: Vec::new(),
+        remedies: Vec::new(),
         mesh: Some(Mesh {
             divisions: vec![6, 4, 6],
             point_count: 144,

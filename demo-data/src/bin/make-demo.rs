@@ -14,7 +14,7 @@ fn main() -> Result<(), Box<dyn std::error::Error>> {
         let (_, package) = entry.build()?;
         package.write_below(&folder)?;
         let bytes: usize = package.files().iter().map(|(_, bytes)| bytes.len()).sum();
-        let digest = blake3::Hash::from(package.digest());
+        let digest = blake3::Hash::from(package.contents.digest());
         writeln!(out, "{:24} {bytes:8} bytes  {digest}", package.name)?;
     }
     Ok(())

@@ -27,7 +27,7 @@ fn committed_packages_are_the_regenerated_ones() {
             assert!(committed == bytes, "{}/{name} differs", entry.name);
             total += bytes.len();
         }
-        assert_eq!(submission.package_digest, package.digest());
+        assert_eq!(submission.package_digest, package.contents.digest());
         names.push(entry.name.to_owned());
     }
     let found = std::fs::read_dir(folder()).unwrap();
@@ -69,7 +69,7 @@ fn numbers(value: &toml::Value) -> Vec<f64> {
 fn manifests_say_what_the_submission_says() {
     for entry in scenario::entries() {
         let (submission, package) = entry.build().unwrap();
-        let manifest: toml::Table = package.manifest.parse().unwrap();
+        let manifest: toml::Table = package.contents.manifest.parse().unwrap();
         assert_eq!(manifest["format"].as_str(), Some("tarehouse-package/1"));
         let identity = table(&manifest, "identity");
         assert_eq!(
@@ -116,7 +116,7 @@ fn arrays_hold_the_constants_in_the_declared_unit() {
     for entry in scenario::entries() {
         let (submission, package) = entry.build().unwrap();
         let scale = entry.declared_unit.in_ev_per_ang2();
-        let values = array(&package.constants);
+        let values = array(&package.contents.arrays[0].1);
         let decoded = submission.constants.to_array();
         assert_eq!(values.len(), decoded.len());
         for (written, wanted) in values.iter().zip(&decoded) {

@@ -1,7 +1,8 @@
 //! The report.
 
 use tarehouse_assay::report::{
-    CrystalFacts, Curves, Finding, FreeEnergy, Mesh, Noise, Report, SoftMode, TruncationChange,
+    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, Mesh, Noise, Remedy, Report, SoftMode,
+    TruncationChange,
 };
 use tarehouse_assay::submission::Digest;
 
@@ -67,6 +68,15 @@ impl From<Report> for v1::Report {
             zero_point_energy_kj_per_mol: report.zero_point_energy_kj_per_mol,
             free_energy: every(report.free_energy),
             curves: Some(report.curves.into()),
+            bracket_parts: report.bracket_parts.map(Into::into),
+            free_energy_draws: report
+                .free_energy_draws
+                .into_iter()
+                .map(|draw| v1::FreeEnergyDraw {
+                    free_energy_kj_per_mol: draw,
+                })
+                .collect(),
+            remedies: every(report.remedies),
         }
     }
 }
@@ -90,6 +100,13 @@ impl TryFrom<v1::Report> for Report {
             zero_point_energy_kj_per_mol: report.zero_point_energy_kj_per_mol,
             free_energy: every(report.free_energy),
             curves: report.curves.ok_or(missing("curves"))?.into(),
+            bracket_parts: report.bracket_parts.map(Into::into),
+            free_energy_draws: report
+                .free_energy_draws
+                .into_iter()
+                .map(|draw| draw.free_energy_kj_per_mol)
+                .collect(),
+            remedies: every(report.remedies),
         })
     }
 }
@@ -274,6 +291,14 @@ alike! { FreeEnergy {
     entropy_j_per_mol_k,
     heat_capacity_j_per_mol_k,
 } }
+alike! { BracketParts {
+    noise_kj_per_mol,
+    bias_kj_per_mol,
+    alias_kj_per_mol,
+    residual_force_kj_per_mol,
+    floor_kj_per_mol,
+} }
+alike! { Remedy { setting, advice, effect_kj_per_mol, } }
 alike! { Curves {
     dos_wavenumber_per_cm,
     dos_total,

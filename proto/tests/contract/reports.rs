@@ -5,8 +5,8 @@ use proptest::option;
 use proptest::prelude::*;
 use prost::Message as _;
 use tarehouse_assay::report::{
-    CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, Mesh, Noise, Report, Rule, Severity,
-    SoftMode, Strength, Tag, TruncationChange, Verdict,
+    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, Mesh, Noise, Remedy,
+    Report, Rule, Severity, SoftMode, Strength, Tag, TruncationChange, Verdict,
 };
 use tarehouse_proto::convert::ConvertError;
 use tarehouse_proto::v1;
@@ -146,6 +146,30 @@ fn curves() -> impl Strategy<Value = Curves> {
     })
 }
 
+type NextSteps = (Option<BracketParts>, Vec<Vec<f64>>, Vec<Remedy>);
+
+fn next_steps() -> impl Strategy<Value = NextSteps> {
+    let parts = [(); 5].map(|()| number()).prop_map(|n| BracketParts {
+        noise_kj_per_mol: n[0],
+        bias_kj_per_mol: n[1],
+        alias_kj_per_mol: n[2],
+        residual_force_kj_per_mol: n[3],
+        floor_kj_per_mol: n[4],
+    });
+    let remedy = (word(), word(), proptest::option::of(number())).prop_map(
+        |(setting, advice, effect_kj_per_mol)| Remedy {
+            setting,
+            advice,
+            effect_kj_per_mol,
+        },
+    );
+    (
+        proptest::option::of(parts),
+        vec(vec(number(), 0..4), 0..3),
+        vec(remedy, 0..3),
+    )
+}
+
 fn report() -> impl Strategy<Value = Report> {
     (
         (any::<[u8; 32]>(), any::<[u8; 32]>(), number(), word()),
@@ -157,7 +181,7 @@ fn report() -> impl Strategy<Value = Report> {
             vec(soft_mode(), 0..3),
         ),
         any::<[u32; 5]>(),
-        (facts(), vec(free_energy(), 0..3), curves()),
+        (facts(), vec(free_energy(), 0..3), curves(), next_steps()),
     )
         .prop_map(
             |((policy, package, zero_point, version), verdict, judged, mesh, found)| Report {
@@ -177,6 +201,9 @@ fn report() -> impl Strategy<Value = Report> {
                 crystal: found.0,
                 zero_point_energy_kj_per_mol: zero_point,
                 free_energy: found.1,
+                bracket_parts: found.3.0,
+                free_energy_draws: found.3.1,
+                remedies: found.3.2,
                 curves: found.2,
             },
         )

@@ -7,6 +7,7 @@ mod facts;
 mod free_energy;
 mod noise;
 pub mod policy;
+mod remedies;
 pub mod report;
 mod soft_modes;
 mod spectra;
@@ -82,7 +83,9 @@ pub fn examine(
     let defined = soft_modes
         .iter()
         .all(|mode| mode.tag == report::Tag::Numerical);
-    let free_energy = free_energy::free_energies(&workup, &spectra, defined);
+    let energies = free_energy::free_energies(&workup, &spectra, defined);
+    let bracket_parts = energies.judged_parts(&workup);
+    let free_energy = energies.values;
     let facts = facts::facts(&workup, &spectra, &free_energy);
     let width = verdict::judged_half_width(&workup, &free_energy);
     let mut findings = checks::structure::check(&workup);
@@ -99,6 +102,7 @@ pub fn examine(
     findings.push(verdict::soft_mode_finding(&soft_modes));
     findings.push(verdict::bracket_finding(&workup, width));
     let (verdict, verdict_reasons) = verdict::decide(&workup, &findings, &soft_modes, width);
+    let remedies = remedies::remedies(&workup, bracket_parts.as_ref(), &findings, &soft_modes);
     let report = Report {
         program_version: PROGRAM_VERSION.to_owned(),
         policy_digest: policy.digest,
@@ -112,6 +116,9 @@ pub fn examine(
         crystal: facts,
         zero_point_energy_kj_per_mol: free_energy.first().map_or(0.0, |f| f.central_kj_per_mol),
         free_energy,
+        bracket_parts,
+        free_energy_draws: energies.draws,
+        remedies,
         curves: curves::curves(&workup, &spectra),
     };
     progress.advance("judgement", 1, 1);

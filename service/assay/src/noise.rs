@@ -61,7 +61,15 @@ impl NoiseModel {
             let noise = pattern.applied_to(white, group);
             Families::measure(constants, &noise, group, erased_below).sigma()
         };
-        let sigma = direct.unwrap_or_else(|| farthest_rms(constants, crystal, images));
+        let sigma = direct.unwrap_or_else(|| {
+            // Noise that is pair-symmetric already has lost half of its variance; draws lose it again by projection.
+            let lost = if families.is_erased(PAIR_SYMMETRY) {
+                2.0_f64.sqrt()
+            } else {
+                1.0
+            };
+            lost * farthest_rms(constants, crystal, images)
+        });
         let summary = Noise {
             // Whatever the asymmetry shows: small constants that round to zero on both sides hide their error.
             sigma_ev_per_ang2: sigma.max(quantum.map_or(0.0, pattern::rounding_deviation)),
@@ -81,6 +89,12 @@ impl NoiseModel {
         }
     }
 
+    /// Standard normals for joint draws, from a stream of the package of their own.
+    pub(crate) fn normal_stream(&self) -> impl FnMut() -> f64 + use<> {
+        let mut rng = stream(&self.seed, JOINT_STREAM);
+        move || StandardNormal.sample(&mut rng)
+    }
+
     /// One draw of the noise that is left after projection, eV/Å². The same index gives the same draw.
     pub(crate) fn draw(
         &self,
@@ -96,6 +110,7 @@ impl NoiseModel {
 }
 
 const MEASURE_STREAM: u64 = 0;
+const JOINT_STREAM: u64 = 1;
 const FIRST_DRAW_STREAM: u64 = 16;
 
 /// A random stream of the package: its digest is the seed, so that the same bytes give the same draws.

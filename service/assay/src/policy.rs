@@ -98,8 +98,8 @@ limits! {
         strong_share_min: f64,
         /// Share.
         alternative_gain: f64,
-        /// Share.
-        locality_gain: f64,
+        /// From −1 to 1.
+        lean_max: f64,
     }
 }
 
@@ -192,6 +192,8 @@ limits! {
         residual_force_undeclared_ev_per_angstrom: f64,
         /// kJ/mol per molecule.
         floor_kj_per_mol: f64,
+        /// Number of joint draws stored.
+        joint_draws: usize,
         /// kJ/mol per formula unit.
         half_width_hold_kj_per_mol: f64,
         /// K.

@@ -33,6 +33,13 @@ pub struct Report {
     pub zero_point_energy_kj_per_mol: f64,
     /// Free energy at each temperature of the policy's grid.
     pub free_energy: Vec<FreeEnergy>,
+    /// What the bracket at the judged temperature is made of; absent where there is no free energy.
+    pub bracket_parts: Option<BracketParts>,
+    /// Joint draws of the free energy: each one F for every temperature of the grid, kJ/mol per formula unit. They keep the
+    /// correlation in temperature; numerical noise only. Empty where there is no free energy.
+    pub free_energy_draws: Vec<Vec<f64>>,
+    /// What to do next, largest effect on the bracket first.
+    pub remedies: Vec<Remedy>,
     /// Curves for drawing.
     pub curves: Curves,
 }
@@ -382,6 +389,44 @@ pub struct FreeEnergy {
     pub entropy_j_per_mol_k: f64,
     /// Heat capacity at constant volume, J/mol/K per formula unit.
     pub heat_capacity_j_per_mol_k: f64,
+}
+
+/// What the half width of a bracket is made of, kJ/mol per formula unit.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct BracketParts {
+    /// Spread of the noise draws.
+    pub noise_kj_per_mol: f64,
+    /// Half the bias of the noise draws.
+    pub bias_kj_per_mol: f64,
+    /// Aliasing of the supercell.
+    pub alias_kj_per_mol: f64,
+    /// Residual force.
+    pub residual_force_kj_per_mol: f64,
+    /// The policy's floor.
+    pub floor_kj_per_mol: f64,
+}
+
+impl BracketParts {
+    /// The half width: the sum of the parts.
+    pub fn half_width_kj_per_mol(&self) -> f64 {
+        self.noise_kj_per_mol
+            + self.bias_kj_per_mol
+            + self.alias_kj_per_mol
+            + self.residual_force_kj_per_mol
+            + self.floor_kj_per_mol
+    }
+}
+
+/// One thing to do next.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Remedy {
+    /// The setting that is the likely limit, as in the package format.
+    pub setting: String,
+    /// What to try.
+    pub advice: String,
+    /// How much of the bracket's half width it can take away, kJ/mol per formula unit; absent where it is not a matter
+    /// of width.
+    pub effect_kj_per_mol: Option<f64>,
 }
 
 /// Curves for drawing.

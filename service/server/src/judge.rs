@@ -158,6 +158,9 @@ pub(crate) fn failed_report(package_digest: Digest, policy: &Policy, attempts: u
         crystal: CrystalFacts::default(),
         zero_point_energy_kj_per_mol: 0.0,
         free_energy: Vec::new(),
+        bracket_parts: None,
+        free_energy_draws: Vec::new(),
+        remedies: Vec::new(),
         curves: Curves::default(),
     };
     v1::Report::from(report).encode_to_vec()

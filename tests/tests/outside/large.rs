@@ -10,9 +10,10 @@ use crate::service::dynamics_of;
 #[test]
 fn large_package_holds_four_molecules_of_66_atoms_near_a_minimum() {
     let package = large_package().unwrap();
-    let arrays = [("constants.npy", package.constants.as_slice())];
+    let contents = &package.contents;
     let submission =
-        tarehouse_proto::package::decode(package.manifest.as_bytes(), &arrays).unwrap();
+        tarehouse_proto::package::decode(contents.manifest.as_bytes(), &contents.array_refs())
+            .unwrap();
     assert_eq!(submission.crystal.atom_count(), 264);
     assert_eq!(submission.constants.supercell().cell_count(), 4);
     let group = SpaceGroup::find(&submission.crystal, 1e-3).unwrap();

@@ -114,7 +114,7 @@ fn bond_blunder(
         .axis_permutations()
         .map(|a| bonds.share_along(&a, limits));
     let best = permuted.into_iter().fold(0.0, f64::max);
-    if best > along + limits.alternative_gain {
+    if best >= limits.bond_share_min && best > along + limits.alternative_gain {
         let remedy =
             "use the Cartesian axes of cell_vectors in the constants, in the order x, y, z";
         return (Some(LikelyCause::PermutedAxes), remedy.to_owned());
@@ -145,47 +145,38 @@ fn bond_blunder(
 
 fn locality(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
     let limits = &workup.limits.blunders;
-    let raw = &workup.submission.constants;
-    let given = Arrangement::as_given(raw);
+    let given = Arrangement::as_given(&workup.submission.constants);
     let share = bonds.share_near(&given, workup, limits.strong_block_distance_angstrom);
-    let spread = given.mean_distance(workup);
-    let alternatives = [
+    let far = share.is_some_and(|s| s < limits.strong_share_min);
+    // An array whose bonds do not fit leans anywhere; only one that fits at home can lean in its translations.
+    let fits = bonds.is_empty() || bonds.share_along(&given, limits) >= limits.bond_share_min;
+    let leans = [
         (
             LikelyCause::SwappedIndexOrder,
-            given.mirrored().mean_distance(workup),
+            arrangement::lean_mirrored(workup),
         ),
         (
             LikelyCause::WrongSupercell,
-            arrangement::best_supercell_reading(workup),
+            arrangement::lean_exchanged(workup),
         ),
     ];
-    let better = alternatives
-        .into_iter()
-        .filter(|(_, other)| *other < (1.0 - limits.locality_gain) * spread)
-        .min_by(|a, b| a.1.total_cmp(&b.1));
-    let far = share.is_some_and(|s| s < limits.strong_share_min);
-    let severity = if far || better.is_some() {
+    let (reading, lean) = if leans[0].1 >= leans[1].1 {
+        leans[0]
+    } else {
+        leans[1]
+    };
+    let leaning = fits && !far && lean > limits.lean_max;
+    let severity = if far || leaning {
         Severity::Fail
     } else {
         Severity::Pass
     };
-    let (cause, remedy) = match better {
-        Some((cause @ LikelyCause::SwappedIndexOrder, _)) => (
-            cause,
-            "read the other way round the constants die out sooner: check constants.first_index and the sign of the \
-             translations",
-        ),
-        Some((cause, _)) => (
-            cause,
-            "with the axes of the supercell exchanged the constants die out sooner: check constants.supercell and the order \
-             of translations",
-        ),
-        None => (
-            LikelyCause::PermutedAtoms,
-            "the strongest constants belong to distant atoms: give constants and positions in the same order of atoms",
-        ),
+    let (cause, remedy) = match (leaning, reading) {
+        (true, LikelyCause::SwappedIndexOrder) => (reading, SWAPPED),
+        (true, _) => (reading, EXCHANGED),
+        (false, _) => (LikelyCause::PermutedAtoms, PERMUTED),
     };
-    let shown = share.map_or_else(
+    let near = share.map_or_else(
         || "no bonded atoms to judge".to_owned(),
         |s| {
             format!(
@@ -194,14 +185,31 @@ fn locality(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
             )
         },
     );
-    Finding::new(
+    let shown = if leaning {
+        "so that another reading makes the constants more local"
+    } else {
+        ""
+    };
+    let finding = Finding::new(
         Rule::Locality,
         severity,
-        format!("{shown}; constants sit at {spread:.2} Å on average"),
-    )
-    .measured(share.unwrap_or(1.0), Some(limits.strong_share_min), "")
-    .because(cause, remedy)
+        format!("{near}; lean towards another reading of the translations {lean:.2} {shown}")
+            .trim_end(),
+    );
+    let finding = if far {
+        finding.measured(share.unwrap_or(1.0), Some(limits.strong_share_min), "")
+    } else {
+        finding.measured(lean, Some(limits.lean_max), "")
+    };
+    finding.because(cause, remedy)
 }
+
+const SWAPPED: &str = "read the other way round the constants sit nearer: check constants.first_index and the sign of the \
+                       translations";
+const EXCHANGED: &str = "with the axes of the supercell exchanged the constants sit nearer: check constants.supercell and \
+                         the order of translations";
+const PERMUTED: &str = "the strongest constants belong to distant atoms: give constants and positions in the same order of \
+                        atoms";
 
 fn block_pattern(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
     let raw = &workup.submission.constants;

@@ -6,6 +6,7 @@ use tarehouse_physics::units::wavenumber_per_cm;
 
 use super::Limit;
 use crate::ExamineError;
+use crate::remedies::next_supercell;
 use crate::report::{Curves, Finding, LikelyCause, Rule, Severity};
 use crate::workup::{Workup, eigen_error, show_q};
 
@@ -105,31 +106,10 @@ fn supercell_size(workup: &Workup<'_>) -> Finding {
     };
     Finding::new(Rule::SupercellSize, severity, words)
         .measured(half, Some(contact), "Å")
-        .because(LikelyCause::SmallSupercell, next_supercell(workup))
-}
-
-/// The next supercell along the shortest direction of the present one, with its atom count.
-fn next_supercell(workup: &Workup<'_>) -> String {
-    let supercell = workup.projected.supercell();
-    let vectors = supercell.vectors(workup.crystal.cell());
-    let shortest = (0..3)
-        .min_by(|a, b| vectors.row(*a).norm().total_cmp(&vectors.row(*b).norm()))
-        .unwrap_or_default();
-    let mut matrix = *supercell.matrix();
-    let gcd = matrix[shortest]
-        .iter()
-        .fold(0_i64, |g, x| gcd(g, x.abs()))
-        .max(1);
-    for x in &mut matrix[shortest] {
-        *x = *x / gcd * (gcd + 1);
-    }
-    let multiple = i64::try_from(supercell.cell_count()).unwrap_or(i64::MAX) / gcd * (gcd + 1);
-    let atoms = multiple * i64::try_from(workup.crystal.atom_count()).unwrap_or(i64::MAX);
-    format!("try the supercell {matrix:?} ({atoms} atoms), longer along its shortest vector")
-}
-
-fn gcd(a: i64, b: i64) -> i64 {
-    if b == 0 { a } else { gcd(b, a % b) }
+        .because(
+            LikelyCause::SmallSupercell,
+            next_supercell::advice(workup, &[]),
+        )
 }
 
 fn truncation(workup: &Workup<'_>, truncated: &[(f64, Dynamics)]) -> Result<Finding, ExamineError> {

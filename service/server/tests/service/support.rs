@@ -137,6 +137,9 @@ pub(crate) fn report(submission: &Submission, policy: &Policy, verdict: Verdict)
         },
         zero_point_energy_kj_per_mol: 2.0,
         free_energy,
+        bracket_parts: None,
+        free_energy_draws: Vec::new(),
+        remedies: Vec::new(),
         curves: Curves::default(),
     }
 }

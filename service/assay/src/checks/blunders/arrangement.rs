@@ -15,7 +15,6 @@ pub(super) struct Arrangement<'a> {
     /// Row r of the reading is row `axes[r]` of the array.
     axes: [usize; 3],
     sign: f64,
-    mirrored: bool,
 }
 
 impl<'a> Arrangement<'a> {
@@ -24,7 +23,6 @@ impl<'a> Arrangement<'a> {
             constants,
             axes: [0, 1, 2],
             sign: 1.0,
-            mirrored: false,
         }
     }
 
@@ -35,49 +33,16 @@ impl<'a> Arrangement<'a> {
         }
     }
 
-    /// Translations with the opposite sign: the same thing as a swapped index order.
-    pub(super) fn mirrored(&self) -> Self {
-        Self {
-            mirrored: !self.mirrored,
-            ..self.clone()
-        }
-    }
-
     pub(super) fn axis_permutations(&self) -> [Self; 5] {
-        [[1, 2, 0], [2, 0, 1], [1, 0, 2], [0, 2, 1], [2, 1, 0]].map(|axes| Self {
+        AXIS_EXCHANGES.map(|axes| Self {
             axes,
             ..self.clone()
         })
     }
 
     fn block(&self, cell: usize, displaced: usize, response: usize) -> Matrix3<f64> {
-        let cell = if self.mirrored {
-            self.constants.supercell().negative(cell)
-        } else {
-            cell
-        };
         let block = self.constants.block(cell, displaced, response);
         Matrix3::from_fn(|r, c| self.sign * block[(self.axes[r], self.axes[c])])
-    }
-
-    /// Mean distance of the constants, weighted by their size, Å: the smaller, the more local.
-    pub(super) fn mean_distance(&self, workup: &Workup<'_>) -> f64 {
-        let n = self.constants.atom_count();
-        let home = self.constants.home_cell();
-        let (mut sum, mut weight) = (0.0, 0.0);
-        for cell in 0..self.constants.supercell().cell_count() {
-            for i in 0..n {
-                for j in 0..n {
-                    if cell == home && i == j {
-                        continue;
-                    }
-                    let size = self.block(cell, i, j).norm();
-                    sum += size * workup.images.distance(&workup.crystal, cell, i, j);
-                    weight += size;
-                }
-            }
-        }
-        if weight > 0.0 { sum / weight } else { 0.0 }
     }
 }
 
@@ -234,50 +199,73 @@ fn is_along(bond: &Bond, reading: &Arrangement<'_>, limits: &BlunderLimits) -> b
     cosine > limits.bond_direction_cosine
 }
 
-/// Mean distance under the best reading of the translations with the axes of the supercell exchanged, Å; infinite where
-/// no other reading exists.
-pub(super) fn best_supercell_reading(workup: &Workup<'_>) -> f64 {
-    let supercell = workup.projected.supercell();
-    [[1, 2, 0], [2, 0, 1], [1, 0, 2], [0, 2, 1], [2, 1, 0]]
-        .into_iter()
-        .filter_map(|axes| reread(supercell, axes))
-        .map(|other| mean_distance_in(workup, &other))
-        .fold(f64::INFINITY, f64::min)
-}
-
-/// The supercell with axes exchanged, if that is another one.
-fn reread(supercell: &Supercell, axes: [usize; 3]) -> Option<Supercell> {
-    let matrix = axes.map(|r| axes.map(|c| supercell.matrix()[r][c]));
-    if matrix == *supercell.matrix() {
-        return None;
-    }
-    let translations = supercell
-        .translations()
-        .iter()
-        .map(|t| axes.map(|c| t[c]))
-        .collect();
-    Supercell::new(matrix, translations).ok()
-}
-
-fn mean_distance_in(workup: &Workup<'_>, supercell: &Supercell) -> f64 {
+/// How far the array leans towards another reading, −1 to 1:
+/// Σ|Φ|(d − d')/Σ|Φ||d − d'|, with d the distance of each block as given and d' in the other reading, over the blocks that
+/// the other reading moves by more than [`MOVED_ANG`]. Blocks that both readings leave in place say nothing.
+fn lean(workup: &Workup<'_>, other_distance: impl Fn(usize, usize, usize) -> f64) -> f64 {
     let raw = &workup.submission.constants;
-    let tolerance = workup.limits.structure.tie_tolerance_angstrom;
-    let images = PairImages::find(&workup.crystal, supercell, tolerance);
-    let (n, home) = (raw.atom_count(), raw.home_cell());
-    let (mut sum, mut weight) = (0.0, 0.0);
+    let n = raw.atom_count();
+    let (mut towards, mut total) = (0.0, 0.0);
     for (flat, block) in raw.blocks().iter().enumerate() {
         let (l, i, j) = (flat / (n * n), flat / n % n, flat % n);
-        if !(l == home && i == j) {
-            sum += block.norm() * images.distance(&workup.crystal, l, i, j);
-            weight += block.norm();
+        let moved = workup.images.distance(&workup.crystal, l, i, j) - other_distance(l, i, j);
+        if moved.abs() > MOVED_ANG {
+            towards += block.norm() * moved;
+            total += block.norm() * moved.abs();
         }
     }
-    if weight > 0.0 {
-        sum / weight
-    } else {
-        f64::INFINITY
-    }
+    if total > 0.0 { towards / total } else { 0.0 }
 }
+
+/// Blocks that another reading moves by less than this are not counted, Å.
+const MOVED_ANG: f64 = 0.3;
+
+/// How far the array leans towards translations with the opposite sign: the same thing as a swapped index order.
+pub(super) fn lean_mirrored(workup: &Workup<'_>) -> f64 {
+    let supercell = workup.projected.supercell();
+    lean(workup, |l, i, j| {
+        workup
+            .images
+            .distance(&workup.crystal, supercell.negative(l), i, j)
+    })
+}
+
+/// How far the array leans towards the supercell with its axes exchanged, at most over all exchanges; with the translations
+/// exchanged alike, or in the order that a script would give them for that matrix.
+pub(super) fn lean_exchanged(workup: &Workup<'_>) -> f64 {
+    let tolerance = workup.limits.structure.tie_tolerance_angstrom;
+    exchanged(workup.projected.supercell())
+        .iter()
+        .map(|supercell| {
+            let images = PairImages::find(&workup.crystal, supercell, tolerance);
+            lean(workup, |l, i, j| images.distance(&workup.crystal, l, i, j))
+        })
+        .fold(-1.0, f64::max)
+}
+
+/// Other readings of the supercell: its axes exchanged.
+fn exchanged(supercell: &Supercell) -> Vec<Supercell> {
+    let mut readings: Vec<Supercell> = Vec::new();
+    for axes in AXIS_EXCHANGES {
+        let matrix = axes.map(|r| axes.map(|c| supercell.matrix()[r][c]));
+        let translations = supercell
+            .translations()
+            .iter()
+            .map(|t| axes.map(|c| t[c]))
+            .collect();
+        let alike = Supercell::new(matrix, translations);
+        let remade = Supercell::with_default_translations(matrix);
+        for reading in [alike, remade].into_iter().flatten() {
+            if reading != *supercell && !readings.contains(&reading) {
+                readings.push(reading);
+            }
+        }
+    }
+    readings
+}
+
+/// The five exchanges of three axes.
+const AXIS_EXCHANGES: [[usize; 3]; 5] = [[1, 2, 0], [2, 0, 1], [1, 0, 2], [0, 2, 1], [2, 1, 0]];
 
 /// A block that is zero where its partner under exchange, or a bond, says that it should not be.
 pub(super) fn zeroed(workup: &Workup<'_>, bonds: &Bonds) -> Option<String> {
