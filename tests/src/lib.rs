@@ -6,5 +6,6 @@
 //! as references.
 
 pub mod closed_forms;
+pub mod judgement;
 pub mod models;
 pub mod quadrature;
