@@ -1,7 +1,9 @@
 //! Runs the benchmark of judgement and prints its tables.
 //!
 //! `judgement [--quick] [--seeds A..B | --tuning A..B --fresh A..B] [--cases N] [--class NAME]... [--policy FILE]
-//! [--json OUT] [--threads N] [--pool N]`
+//! [--json OUT] [--threads N] [--pool N] [--minutes N]`
+//!
+//! With `--minutes` no case is begun after that time in each range; classes are gone through in turn.
 
 use std::error::Error;
 use std::io::Write;
@@ -27,6 +29,7 @@ struct Options {
     json: Option<String>,
     threads: usize,
     places: usize,
+    minutes: f64,
 }
 
 impl Options {
@@ -39,6 +42,7 @@ impl Options {
             json: None,
             threads: 2,
             places: 24,
+            minutes: f64::INFINITY,
         };
         let mut quick = false;
         while let Some(name) = arguments.next() {
@@ -58,6 +62,7 @@ impl Options {
                 "--policy" => options.policy = Some(value),
                 "--json" => options.json = Some(value),
                 "--threads" => options.threads = value.parse()?,
+                "--minutes" => options.minutes = value.parse()?,
                 "--pool" => options.places = value.parse()?,
                 _ => return Err(format!("{name} is not known").into()),
             }
@@ -103,13 +108,20 @@ struct Job {
     turn: u64,
 }
 
-fn run(pool: &Pool, jobs: &[Job], policy: &Policy, threads: usize) -> (Vec<Outcome>, Vec<String>) {
+fn run(
+    pool: &Pool,
+    jobs: &[Job],
+    policy: &Policy,
+    options: &Options,
+) -> (Vec<Outcome>, Vec<String>) {
+    let started = Instant::now();
+    let in_time = || started.elapsed().as_secs_f64() < 60.0 * options.minutes;
     let next = AtomicUsize::new(0);
     let collected = Mutex::new(Vec::new());
     std::thread::scope(|scope| {
-        for _ in 0..threads {
+        for _ in 0..options.threads {
             scope.spawn(|| {
-                loop {
+                while in_time() {
                     let index = next.fetch_add(1, Ordering::Relaxed);
                     let Some(job) = jobs.get(index) else { break };
                     let result = attempt(pool, job, policy);
@@ -186,7 +198,7 @@ fn main() -> Result<(), Box<dyn Error>> {
             .flat_map(|(seed, turn)| chosen.iter().map(move |class| (seed, turn, *class)))
             .map(|(seed, turn, class)| Job { class, seed, turn })
             .collect();
-        let (outcomes, troubles) = run(&pool, &jobs, &policy, options.threads);
+        let (outcomes, troubles) = run(&pool, &jobs, &policy, &options);
         for trouble in &troubles {
             writeln!(out, "{trouble}")?;
         }

@@ -59,6 +59,43 @@ impl Exact {
         }
     }
 
+    /// The same crystal with every atom written inside the cell, so that molecules reach over its border.
+    ///
+    /// # Errors
+    /// [`BenchError::Malformed`].
+    pub fn wrapped(&self) -> Result<Self, BenchError> {
+        let moves: Vec<Vector3<f64>> = self
+            .crystal
+            .positions()
+            .iter()
+            .map(|x| x.map(f64::floor))
+            .collect();
+        let positions = self.crystal.positions().iter().zip(&moves);
+        let crystal = self
+            .crystal
+            .with_positions(positions.map(|(x, moved)| x - moved).collect())
+            .map_err(|errors| BenchError::Malformed(format!("{errors:?}")))?;
+        let whole = |x: f64| -> i64 {
+            #[allow(clippy::cast_possible_truncation, reason = "a few cells at most")]
+            let count = x as i64;
+            count
+        };
+        let couplings = self
+            .couplings
+            .iter()
+            .map(|coupling| {
+                let offset = moves[coupling.response] - moves[coupling.displaced];
+                let translation =
+                    std::array::from_fn(|c| coupling.translation[c] + whole(offset[c]));
+                Coupling {
+                    translation,
+                    ..*coupling
+                }
+            })
+            .collect();
+        Ok(Self { crystal, couplings })
+    }
+
     /// The constants as a supercell calculation finds them.
     ///
     /// # Errors

@@ -137,7 +137,7 @@ impl Pool {
             .filter(|member| member.atom_count() <= atoms_max)
             .collect();
         let weight = |member: &Member| {
-            let size = member.atom_count() as f64 / 24.0;
+            let size = member.atom_count() as f64 / 16.0;
             1.0 / (1.0 + size.powi(4))
         };
         let total: f64 = fitting.iter().map(|m| weight(m)).sum();

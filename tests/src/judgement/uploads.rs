@@ -416,9 +416,16 @@ fn wrong<'a>(
     let member = pool.draw(24, rng)?;
     let multiples = wide_multiples(member, 8.0, 240)?;
     let multiples = telling_multiples(blunder, multiples, &member.model.cell_heights());
-    let folded = member.exact.folded(&diagonal(multiples)?)?;
+    // Some programs keep molecules whole, others bring every atom into the cell.
+    let inside = rng.random_range(0..2) == 0;
+    let exact = if inside {
+        member.exact.wrapped()?
+    } else {
+        member.exact.clone()
+    };
+    let folded = exact.folded(&diagonal(multiples)?)?;
     let sigma = [CLEAN_SIGMA, 5e-4][rng.random_range(0..2)];
-    let crystal = member.exact.crystal();
+    let crystal = exact.crystal();
     let constants = Disturbance::White { sigma }.apply(crystal, &folded, seed)?;
     let altered = commit(blunder, crystal, &constants, turn, rng)?;
     let submission = match altered.constants {
@@ -428,10 +435,8 @@ fn wrong<'a>(
             let mut contribution = Contribution::new(name, name, member.model.clone(), constants);
             contribution.declared_unit = altered.unit;
             let mut submission = contribution.seal()?.0;
-            if let Some(crystal) = altered.crystal {
-                submission.crystal = crystal;
-                submission.masses_declared = blunder == Blunder::Masses;
-            }
+            submission.crystal = altered.crystal.unwrap_or_else(|| crystal.clone());
+            submission.masses_declared = blunder == Blunder::Masses;
             Some(submission)
         }
     };
@@ -440,6 +445,14 @@ fn wrong<'a>(
         multiples,
         expected: Expected::Blunder(blunder),
         submission,
-        detail: format!("{}, σ {sigma:.0e}", altered.detail),
+        detail: format!(
+            "{}, σ {sigma:.0e}, atoms {}",
+            altered.detail,
+            if inside {
+                "inside the cell"
+            } else {
+                "of molecules together"
+            }
+        ),
     })
 }
