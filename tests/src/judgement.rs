@@ -12,6 +12,7 @@ pub mod pool;
 pub mod blunders;
 pub mod uploads;
 
+pub mod lean;
 pub mod scoring;
 pub mod table;
 

@@ -17,6 +17,7 @@ use tarehouse_physics::{ForceConstants, vibrations};
 
 use crate::judgement::blunders::is_blunder;
 use crate::judgement::exact::{Exact, TIE_ANG, diagonal, group_of};
+use crate::judgement::lean;
 use crate::judgement::uploads::{Case, Expected};
 use crate::judgement::{BenchError, TEMPERATURES_K, seed_of};
 
@@ -138,6 +139,10 @@ pub struct Outcome {
     pub named: bool,
     /// Blunders named although there is none.
     pub false_alarms: Vec<String>,
+    /// Lean of the array towards negated translations; see [`lean`].
+    pub lean_negated: Option<f64>,
+    /// Lean of the array towards a supercell with exchanged axes.
+    pub lean_exchanged: Option<f64>,
     /// The verdict.
     pub verdict: String,
     /// Time of the examination, s.
@@ -172,6 +177,8 @@ pub fn score(
     let report = examine(submission, policy, &Unwatched)?;
     outcome.seconds = started.elapsed().as_secs_f64();
     describe(&mut outcome, &report);
+    outcome.lean_negated = lean::towards_negated(submission);
+    outcome.lean_exchanged = lean::towards_exchanged(submission);
     match &case.expected {
         Expected::Stable(sigma) => {
             outcome.sigma = (*sigma > 0.0).then_some(*sigma);
@@ -235,6 +242,8 @@ fn blank(case: &Case<'_>, class: &'static str, seed: u64, turn: u64) -> Outcome 
         causes: Vec::new(),
         named: false,
         false_alarms: Vec::new(),
+        lean_negated: None,
+        lean_exchanged: None,
         verdict: String::new(),
         seconds: 0.0,
     }

@@ -27,6 +27,7 @@ pub fn tables(title: &str, outcomes: &[Outcome]) -> String {
     text.push_str(&tags(outcomes));
     text.push_str(&bracket_table(outcomes));
     text.push_str(&blunder_table(outcomes));
+    text.push_str(&leans(outcomes));
     text.push_str(&figures(outcomes));
     text.push_str(&failures(outcomes));
     text
@@ -171,6 +172,44 @@ fn blunder_table(outcomes: &[Outcome]) -> String {
             chosen.len()
         );
     }
+    text
+}
+
+type Lean = fn(&Outcome) -> Option<f64>;
+
+/// How well the reference of [`crate::judgement::lean`] tells rearranged arrays from sound ones.
+fn leans(outcomes: &[Outcome]) -> String {
+    let mut text =
+        String::from("\nlean towards another reading (reference)  least, median, largest\n");
+    let mut row = |name: &str, chosen: &dyn Fn(&Outcome) -> bool, lean: Lean| {
+        let mut values: Vec<f64> = outcomes
+            .iter()
+            .filter(|o| chosen(o))
+            .filter_map(lean)
+            .collect();
+        values.sort_by(f64::total_cmp);
+        if let (Some(least), Some(largest)) = (values.first(), values.last()) {
+            let middle = values[values.len() / 2];
+            let count = values.len();
+            let _ = writeln!(
+                text,
+                "{name:40} {least:6.2} {middle:6.2} {largest:6.2}  of {count}"
+            );
+        }
+    };
+    let sound = |o: &Outcome| o.truth != Truth::Blunder;
+    let swapped =
+        |o: &Outcome| o.class == "swapped-index-order" || o.class == "negated-translations";
+    let exchanged = |o: &Outcome| o.class == "wrong-supercell";
+    let (to_negated, to_exchanged): (Lean, Lean) = (|o| o.lean_negated, |o| o.lean_exchanged);
+    row("negated translations, sound uploads", &sound, to_negated);
+    row(
+        "negated translations, swapped uploads",
+        &swapped,
+        to_negated,
+    );
+    row("exchanged axes, sound uploads", &sound, to_exchanged);
+    row("exchanged axes, wrong supercells", &exchanged, to_exchanged);
     text
 }
 
