@@ -10,11 +10,16 @@ pub mod instability;
 pub mod pool;
 
 pub mod blunders;
+pub mod geometry;
 pub mod uploads;
 
+pub mod depth;
 pub mod lean;
 pub mod scoring;
 pub mod table;
+
+#[cfg(test)]
+mod checks;
 
 /// Temperatures at which brackets are judged, K.
 pub const TEMPERATURES_K: [f64; 4] = [10.0, 100.0, 300.0, 500.0];

@@ -51,6 +51,7 @@ impl Exact {
     }
 
     /// The same crystal with more couplings.
+    #[must_use]
     pub fn with(&self, added: &[Coupling]) -> Self {
         let couplings = self.couplings.iter().chain(added).copied().collect();
         Self {

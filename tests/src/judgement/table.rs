@@ -3,7 +3,8 @@
 use std::fmt::Write as _;
 
 use crate::judgement::TEMPERATURES_K;
-use crate::judgement::scoring::{Outcome, Truth, Worst, depth_words};
+use crate::judgement::depth::depth_words;
+use crate::judgement::scoring::{Outcome, Truth, Worst};
 use crate::judgement::uploads::classes;
 
 /// Largest share of stable crystals that may be called possibly physical, weakly.
@@ -219,6 +220,13 @@ fn figures(outcomes: &[Outcome]) -> String {
         let mark = if reached { "reached" } else { "MISSED" };
         let _ = writeln!(text, "{name:64} {value:>20}  {mark}");
     };
+    tag_figures(outcomes, &mut line);
+    bracket_figures(outcomes, &mut line);
+    blunder_figures(outcomes, &mut line);
+    text
+}
+
+fn tag_figures(outcomes: &[Outcome], line: &mut impl FnMut(&str, String, bool)) {
     let stable: Vec<&Outcome> = with(outcomes, Truth::Stable);
     let count = |chosen: &[&Outcome], worst| chosen.iter().filter(|o| o.worst == worst).count();
     let strong = count(&stable, Worst::PhysicalStrong);
@@ -243,6 +251,10 @@ fn figures(outcomes: &[Outcome]) -> String {
         format!("{found} of {}", unstable.len()),
         unstable.is_empty() || share(found, unstable.len()) >= FOUND_MIN,
     );
+}
+
+fn bracket_figures(outcomes: &[Outcome], line: &mut impl FnMut(&str, String, bool)) {
+    let stable: Vec<&Outcome> = with(outcomes, Truth::Stable);
     for (t, temperature) in TEMPERATURES_K.iter().enumerate() {
         let all = coverage(&stable, t);
         let worst = classes()
@@ -274,6 +286,9 @@ fn figures(outcomes: &[Outcome]) -> String {
         format!("{width:.3} over {}", narrow.len()),
         narrow.is_empty() || width <= WIDTH_MAX,
     );
+}
+
+fn blunder_figures(outcomes: &[Outcome], line: &mut impl FnMut(&str, String, bool)) {
     let blunders: Vec<&Outcome> = with(outcomes, Truth::Blunder);
     let named = blunders.iter().filter(|o| o.named).count();
     line(
@@ -291,7 +306,6 @@ fn figures(outcomes: &[Outcome]) -> String {
         format!("{alarms} of {sound}"),
         alarms == 0,
     );
-    text
 }
 
 fn with(outcomes: &[Outcome], truth: Truth) -> Vec<&Outcome> {

@@ -1,17 +1,15 @@
 //! The classes of uploads: how each is made from a crystal of the pool, and what is then true of it.
 
-use nalgebra::{DVector, SymmetricEigen, Vector3};
 use rand::{Rng, RngExt};
-use rand_distr::{Distribution, StandardNormal};
 use tarehouse_assay::Submission;
 use tarehouse_assay::submission::{Differences, Displaced, Enforced};
+use tarehouse_demo_data::Contribution;
 use tarehouse_demo_data::noise::Disturbance;
-use tarehouse_demo_data::runs::{Run, forces};
-use tarehouse_demo_data::{Contribution, MolecularCrystal, RealSpaceConstants};
-use tarehouse_physics::{Crystal, ForceConstants, Supercell};
+use tarehouse_physics::{Crystal, ForceConstants};
 
 use crate::judgement::blunders::{Blunder, commit, telling_multiples};
-use crate::judgement::exact::{Exact, constants_of, diagonal, multiples_reaching};
+use crate::judgement::exact::{Exact, diagonal, multiples_reaching};
+use crate::judgement::geometry::{forward, unrelaxed};
 use crate::judgement::instability::{Kind, softened};
 use crate::judgement::pool::{Member, Pool};
 use crate::judgement::{BenchError, generator, seed_of};
@@ -116,6 +114,8 @@ pub struct Case<'a> {
 pub const CLEAN_SIGMA: f64 = 2e-5;
 /// σ of the classes that enforce something, eV/Å².
 const USUAL_SIGMA: (f64, f64) = (1e-4, 3e-3);
+/// Residual forces of unrelaxed geometries, rms, eV/Å.
+const RESIDUAL_FORCE: (f64, f64) = (1e-3, 1e-2);
 /// Atoms of the supercell at most.
 const SUPERCELL_ATOMS_MAX: usize = 450;
 
@@ -163,7 +163,7 @@ fn stable<'a>(
     };
     let supercell = diagonal(multiples)?;
     let (model, exact) = match making {
-        Making::Unrelaxed => unrelaxed(member, rng)?,
+        Making::Unrelaxed => unrelaxed(member, logarithmic(RESIDUAL_FORCE, rng), rng)?,
         _ => (member.model.clone(), member.exact.clone()),
     };
     let folded = exact.folded(&supercell)?;
@@ -281,85 +281,6 @@ fn small_multiples(member: &Member, rng: &mut impl Rng) -> Result<[i64; 3], Benc
         multiples = [1; 3];
     }
     Ok(multiples)
-}
-
-/// Φ[l,i,j]_ab = −(F⁺ − F⁰)_jb / h.
-fn forward(
-    model: &MolecularCrystal,
-    supercell: &Supercell,
-    displacement: f64,
-) -> Result<ForceConstants, BenchError> {
-    let n = model.atom_count();
-    let rest = Run {
-        atom: 0,
-        vector: Vector3::zeros(),
-    };
-    let displaced = (0..3 * n).map(|k| {
-        let mut vector = Vector3::zeros();
-        vector[k % 3] = displacement;
-        Run {
-            atom: k / 3,
-            vector,
-        }
-    });
-    let runs: Vec<Run> = std::iter::once(rest).chain(displaced).collect();
-    let found = forces(model, supercell, &runs)?;
-    let blocks = (0..supercell.cell_count() * n * n)
-        .map(|k| {
-            let (l, i, j) = (k / (n * n), k / n % n, k % n);
-            nalgebra::Matrix3::from_fn(|a, b| {
-                -(found[1 + 3 * i + a][l * n + j][b] - found[0][l * n + j][b]) / displacement
-            })
-        })
-        .collect();
-    constants_of(supercell, n, blocks)
-}
-
-/// Curvatures below this (eV/Å²) are rigid translations.
-const RIGID_BELOW: f64 = 1e-6;
-
-/// A geometry in which a white residual force of the space group is left: u = H⁺ f.
-fn unrelaxed(member: &Member, rng: &mut impl Rng) -> Result<(MolecularCrystal, Exact), BenchError> {
-    let target = logarithmic((1e-3, 1e-2), rng);
-    let n = member.atom_count();
-    let operations = member.group.operations();
-    let size = n / operations.len();
-    let mut force = DVector::zeros(3 * n);
-    for atom in 0..size {
-        let drawn = Vector3::from_fn(|_, _| -> f64 { StandardNormal.sample(rng) });
-        for (copy, operation) in operations.iter().enumerate() {
-            let turned = operation.cartesian(member.model.cell()) * drawn;
-            force
-                .rows_mut(3 * (copy * size + atom), 3)
-                .copy_from(&turned);
-        }
-    }
-    let hessian = member.model.derivatives().hessian;
-    let hessian = hessian.view((0, 0), (3 * n, 3 * n)).into_owned();
-    let eigen = SymmetricEigen::new(hessian);
-    let mut step = DVector::<f64>::zeros(3 * n);
-    for (column, value) in eigen.eigenvectors.column_iter().zip(&eigen.eigenvalues) {
-        if *value > RIGID_BELOW {
-            step += column * (column.dot(&force) / value);
-        }
-    }
-    let moved = |scale: f64| {
-        let shift: Vec<Vector3<f64>> = (0..n)
-            .map(|i| Vector3::from_fn(|c, _| scale * step[3 * i + c]))
-            .collect();
-        member.model.displaced(&shift)
-    };
-    let residual = |model: &MolecularCrystal| {
-        let all = model.forces();
-        (all.iter().map(Vector3::norm_squared).sum::<f64>() / n as f64).sqrt()
-    };
-    let mut scale = 1e-3;
-    for _ in 0..4 {
-        scale *= target / residual(&moved(scale)?);
-    }
-    let model = moved(scale)?;
-    let exact = Exact::of(&RealSpaceConstants::of(&model)?);
-    Ok((model, exact))
 }
 
 /// Atoms at most of a crystal whose exact spectrum is searched upload by upload.
