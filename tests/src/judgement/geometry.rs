@@ -91,8 +91,9 @@ pub fn unrelaxed(
         (all.iter().map(Vector3::norm_squared).sum::<f64>() / n as f64).sqrt()
     };
     let mut scale = 1e-3;
-    for _ in 0..4 {
-        scale *= target_ev_per_ang / residual(&moved(scale)?);
+    // The force is not linear in so soft a displacement: damped, or the steps would swing.
+    for _ in 0..24 {
+        scale *= (target_ev_per_ang / residual(&moved(scale)?)).powf(0.6);
     }
     let model = moved(scale)?;
     let exact = Exact::of(&RealSpaceConstants::of(&model)?);
