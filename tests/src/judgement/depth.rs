@@ -45,13 +45,29 @@ pub struct Depth {
     pub commensurate: bool,
     /// Whether the service's own mesh holds it.
     pub on_service_mesh: bool,
+    /// Eigenvalue interpolated from the folded constants without noise: where it is positive, folding has left no trace.
+    pub interpolated: f64,
 }
+
+/// Errors of the free energy of noise-free constants at 300 K, kJ/mol per molecule.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
+pub struct Aliasing {
+    /// |F(other sharing) − F(nearest images)|.
+    pub sharing: f64,
+    /// F of the folded constants less F of the unfolded ones, both on the service's mesh.
+    pub folding: f64,
+    /// F of the unfolded constants on the service's mesh less the truth; the long-wave limit is that of the folded ones.
+    pub mesh: f64,
+}
+
+/// Place of 300 K among the temperatures.
+const AT_300_K: usize = 2;
 
 /// How far the free energy of the exact constants depends on the way images share them.
 ///
 /// # Errors
 /// [`BenchError`].
-pub fn alias(case: &Case<'_>) -> Result<f64, BenchError> {
+pub fn alias(case: &Case<'_>) -> Result<Aliasing, BenchError> {
     let (crystal, exact) = (case.member.exact.crystal(), &case.member.exact);
     let supercell = diagonal(case.multiples)?;
     let group = group_of(crystal)?;
@@ -83,8 +99,23 @@ pub fn alias(case: &Case<'_>) -> Result<f64, BenchError> {
         }
         *slot = vibrations::of_mesh(&mesh, &spectrum, term, WIDTH_TEMPERATURE_K).free_energy;
     }
-    let molecules = case.member.model.molecule_count() as f64;
-    Ok((energies[1] - energies[0]).abs() * EV_TO_KJ_PER_MOL / molecules)
+    let mut unfolded = Vec::with_capacity(mesh.points().len());
+    for (index, point) in mesh.points().iter().enumerate() {
+        unfolded.push(if index == 0 {
+            acoustic.optical_modes().eigenvalues
+        } else {
+            exact.eigenvalues(&point.q)?
+        });
+    }
+    let unfolded = vibrations::of_mesh(&mesh, &unfolded, term, WIDTH_TEMPERATURE_K).free_energy;
+    let to_kj = EV_TO_KJ_PER_MOL / case.member.model.molecule_count() as f64;
+    let truth = case.member.truth.as_ref();
+    let truth = truth.map_or(f64::NAN, |t| t.free_energy_kj_per_mol[AT_300_K]);
+    Ok(Aliasing {
+        sharing: (energies[1] - energies[0]).abs() * to_kj,
+        folding: (energies[0] - unfolded) * to_kj,
+        mesh: unfolded * to_kj - truth,
+    })
 }
 
 fn margin(depth: &Depth) -> f64 {
@@ -166,6 +197,7 @@ pub fn deepest(
             alias,
             commensurate: point.commensurate,
             on_service_mesh: on_coarse,
+            interpolated: modes.eigenvalues.first().copied().unwrap_or_default(),
         };
         if best.as_ref().is_none_or(|b| margin(&depth) < margin(b)) {
             best = Some(depth);
@@ -181,7 +213,7 @@ fn difference(left: &ForceConstants, right: &ForceConstants) -> ForceConstants {
 /// A depth in words.
 pub fn depth_words(depth: &Depth) -> String {
     format!(
-        "exact {:.1} cm⁻¹ at {:.3?} ({}{}): λ {:.2e}, σ_λ {:.1e}, a {:.1e} eV/Å²/u",
+        "exact {:.1} cm⁻¹ at {:.3?} ({}{}): λ {:.2e}, interpolated {:.2e}, σ_λ {:.1e}, a {:.1e} eV/Å²/u",
         wavenumber_per_cm(depth.eigenvalue),
         depth.q,
         if depth.commensurate {
@@ -195,6 +227,7 @@ pub fn depth_words(depth: &Depth) -> String {
             ", beside the service's mesh"
         },
         depth.eigenvalue,
+        depth.interpolated,
         depth.sigma,
         depth.alias
     )

@@ -8,7 +8,7 @@ use tarehouse_assay::{Policy, Unwatched, examine};
 use tarehouse_demo_data::noise::Disturbance;
 
 use crate::judgement::blunders::is_blunder;
-use crate::judgement::depth::{Depth, alias, deepest, is_decidable};
+use crate::judgement::depth::{Aliasing, Depth, alias, deepest, is_decidable};
 use crate::judgement::lean;
 use crate::judgement::uploads::{Case, Expected};
 use crate::judgement::{BenchError, TEMPERATURES_K, seed_of};
@@ -87,8 +87,8 @@ pub struct Outcome {
     pub worst_words: String,
     /// Brackets, for stable crystals.
     pub brackets: Vec<Bracketed>,
-    /// |F(other sharing) − F(nearest)| of the exact constants at 300 K, kJ/mol per molecule.
-    pub alias: Option<f64>,
+    /// What folding and the mesh do to the free energy.
+    pub alias: Option<Aliasing>,
     /// The instability.
     pub depth: Option<Depth>,
     /// The cause that should be named.

@@ -277,7 +277,7 @@ fn bracket_figures(outcomes: &[Outcome], line: &mut impl FnMut(&str, String, boo
     let narrow: Vec<&Outcome> = stable
         .iter()
         .filter(|o| o.sigma.is_some_and(|s| s <= WIDTH_SIGMA))
-        .filter(|o| o.alias.is_some_and(|a| a < WIDTH_ALIAS) && o.class != "unrelaxed")
+        .filter(|o| o.alias.is_some_and(|a| a.sharing < WIDTH_ALIAS) && o.class != "unrelaxed")
         .copied()
         .collect();
     let width = median(widths(&narrow, AT_300_K));
@@ -375,9 +375,14 @@ pub fn faults(outcome: &Outcome) -> Vec<String> {
         })
         .collect();
     if !missed.is_empty() {
-        let alias = outcome.alias.unwrap_or_default();
+        let parts = outcome.alias.map_or_else(String::new, |a| {
+            format!(
+                "sharing {:.3}, folding {:+.3}, mesh {:+.3}",
+                a.sharing, a.folding, a.mesh
+            )
+        });
         let missed = missed.join("; ");
-        faults.push(format!("bracket missed (alias {alias:.3}): {missed}"));
+        faults.push(format!("bracket missed ({parts}): {missed}"));
     }
     let alarms = outcome.false_alarms.iter();
     faults.extend(alarms.map(|alarm| format!("false alarm: {alarm}")));
