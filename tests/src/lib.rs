@@ -7,5 +7,6 @@
 
 pub mod closed_forms;
 pub mod large_package;
+pub mod judgement;
 pub mod models;
 pub mod quadrature;
