@@ -156,8 +156,14 @@ async fn a_package_is_submitted_once() {
         );
     }
     assert_eq!(names.len(), 1);
+    let opening = Pack::new("velnaric acid", "III", -10.0).request();
+    house
+        .submissions()
+        .create_submission(opening.clone())
+        .await
+        .unwrap();
     let other = v1::CreateSubmissionRequest {
-        request_id: request.request_id,
+        request_id: opening.request_id,
         ..Pack::new("velnaric acid", "II", -10.0).request()
     };
     let status = house
