@@ -1,9 +1,12 @@
-//! Between the messages of the wire and the words of the domain. Nothing is lost either way.
+//! Between the messages of the wire and the words of the domain. Nothing is lost either way, but the sign of a
+//! zero, which the wire format does not keep.
 
 mod names;
 mod report;
 
-pub use names::{digest_from_hex, digest_to_hex, likely_cause_names, rule_by_name, rule_names};
+pub use names::{
+    digest_from_hex, digest_to_hex, likely_cause_names, limits_message, rule_by_name, rule_names,
+};
 
 /// Why a message is not what the contract promises.
 #[derive(Debug, Clone, PartialEq, Eq, thiserror::Error)]

@@ -1,7 +1,8 @@
 //! Eigenvalues of the model crystals in closed form, in the unit stiffness/mass, ascending.
 //!
-//! Born & von Kármán, Phys. Z. 13, 297 (1912); Kittel, Introduction to Solid State Physics, ch. 4. Phases are
-//! θ = q·a of the chain; zone-boundary values are those of `reference/lattice_exact.toml`.
+//! Born & von Kármán, Phys. Z. 13, 297 (1912); Kittel, Introduction to Solid State Physics, ch. 4.
+//! Phases are θ = q·a of the chain; zone-boundary values are those of
+//! `reference/lattice_exact.toml`.
 
 use std::f64::consts::PI;
 
@@ -35,7 +36,8 @@ pub fn diatomic_chain(springs: [f64; 2], masses_u: [f64; 2], theta: f64) -> [f64
     [product / optical, optical]
 }
 
-/// Points of the fcc zone boundary in units of 2π/a and λ m/K there, nearest-neighbour central springs K.
+/// Points of the fcc zone boundary in units of 2π/a and λ m/K there, nearest-neighbour central
+/// springs K.
 pub fn fcc_zone_boundary() -> [([f64; 3], [f64; 3]); 4] {
     let root = 2.0_f64.sqrt();
     [
@@ -49,8 +51,8 @@ pub fn fcc_zone_boundary() -> [([f64; 3], [f64; 3]); 4] {
     ]
 }
 
-/// λ m/K of nearest-neighbour fcc along [ζ00] in units of 2π/a: transverse 4(1 − cos πζ)/2 twice, longitudinal
-/// 4(1 − cos πζ); from D_xx = 2[2 − c_x(c_y + c_z)].
+/// λ m/K of nearest-neighbour fcc along [ζ00] in units of 2π/a: transverse 4(1 − cos πζ)/2 twice,
+/// longitudinal 4(1 − cos πζ); from D_xx = 2[2 − c_x(c_y + c_z)].
 pub fn fcc_along_cube_axis(zeta: f64) -> [f64; 3] {
     let longitudinal = 4.0 * (1.0 - (PI * zeta).cos());
     [0.5 * longitudinal, 0.5 * longitudinal, longitudinal]

@@ -1,8 +1,9 @@
 //! Model crystals with springs of known strength: chains, cubic crystals, Born–von Kármán metals.
 //!
-//! A [`SpringCrystal`] keeps its constants unfolded, of whatever range. [`SpringCrystal::constants`] folds them into a
-//! supercell as a calculation would; [`SpringCrystal::dynamical_matrix`] is the exact sum that interpolation from the
-//! folded ones can only reach where nothing is aliased.
+//! A [`SpringCrystal`] keeps its constants unfolded, of whatever range.
+//! [`SpringCrystal::constants`] folds them into a supercell as a calculation would;
+//! [`SpringCrystal::dynamical_matrix`] is the exact sum that interpolation from the folded ones can
+//! only reach where nothing is aliased.
 
 pub mod metals;
 
@@ -32,8 +33,8 @@ impl SpringCrystal {
         Self { crystal, blocks }
     }
 
-    /// Ties atom `first` of the home cell to atom `second` of the cell at `translation`: displacing one by u pulls the
-    /// other with K u. `stiffness` is K in eV/Å²; the self blocks follow.
+    /// Ties atom `first` of the home cell to atom `second` of the cell at `translation`: displacing
+    /// one by u pulls the other with K u. `stiffness` is K in eV/Å²; the self blocks follow.
     pub fn tie(
         &mut self,
         first: usize,
@@ -54,7 +55,8 @@ impl SpringCrystal {
         &self.crystal
     }
 
-    /// The constants folded into the supercell with these rows: all blocks whose translations agree modulo S are added.
+    /// The constants folded into the supercell with these rows: all blocks whose translations agree
+    /// modulo S are added.
     ///
     /// # Panics
     /// If S is singular.
@@ -70,8 +72,8 @@ impl SpringCrystal {
         ForceConstants::from_blocks(supercell, n, blocks).expect("finite blocks of every cell")
     }
 
-    /// The exact D_ij(q) = Σ_R Φ_ij(R) exp(iq·(R + r_j − r_i))/√(m_i m_j) in eV/Å²/u; q in fractional reciprocal
-    /// coordinates.
+    /// The exact D_ij(q) = Σ_R Φ_ij(R) exp(iq·(R + r_j − r_i))/√(m_i m_j) in eV/Å²/u; q in
+    /// fractional reciprocal coordinates.
     pub fn dynamical_matrix(&self, q_frac: &Vector3<f64>) -> DMatrix<Complex<f64>> {
         let n = self.crystal.atom_count();
         let (positions, masses) = (self.crystal.positions(), self.crystal.masses_u());
@@ -97,7 +99,8 @@ impl SpringCrystal {
         values
     }
 
-    /// Fractional reciprocal coordinates of the wave vector (2π/`edge_ang`)·`reduced`, `reduced` Cartesian.
+    /// Fractional reciprocal coordinates of the wave vector (2π/`edge_ang`)·`reduced`, `reduced`
+    /// Cartesian.
     pub fn fractional_q(&self, edge_ang: f64, reduced: [f64; 3]) -> Vector3<f64> {
         self.crystal.cell() * Vector3::from(reduced) / edge_ang
     }
@@ -107,8 +110,9 @@ impl SpringCrystal {
     }
 }
 
-/// A chain along x in a cubic net: springs `along` (K₁, K₂, … to the first, second, … neighbour) for displacements
-/// along x, and springs `across` between all nearest neighbours for everything else. No direction mixes with another.
+/// A chain along x in a cubic net: springs `along` (K₁, K₂, … to the first, second, … neighbour)
+/// for displacements along x, and springs `across` between all nearest neighbours for everything
+/// else. No direction mixes with another.
 pub fn chain(along: &[f64], across: f64, mass_u: f64) -> SpringCrystal {
     let cell = Matrix3::identity() * CHAIN_EDGE_ANG;
     let mut model = SpringCrystal::new(crystal(cell, &[[0.0; 3]], &[mass_u]));
@@ -123,13 +127,15 @@ pub fn chain(along: &[f64], across: f64, mass_u: f64) -> SpringCrystal {
     model
 }
 
-/// The chain that is soft only near its zone boundary: springs 1, 3, −1.2 in units of `unit`, with springs across it of
-/// one unit; unstable beyond 0.938 of the way to the boundary, λ = −0.8 unit/mass at it.
+/// The chain that is soft only near its zone boundary: springs 1, 3, −1.2 in units of `unit`, with
+/// springs across it of one unit; unstable beyond 0.938 of the way to the boundary, λ = −0.8
+/// unit/mass at it.
 pub fn soft_boundary_chain(unit: f64, mass_u: f64) -> SpringCrystal {
     chain(&[unit, 3.0 * unit, -1.2 * unit], unit, mass_u)
 }
 
-/// Two atoms in the cell on a line along x, springs K inside the cell and G to the next, springs `across` sideways.
+/// Two atoms in the cell on a line along x, springs K inside the cell and G to the next, springs
+/// `across` sideways.
 pub fn diatomic_chain(springs: [f64; 2], across: f64, masses_u: [f64; 2]) -> SpringCrystal {
     let cell = Matrix3::identity() * CHAIN_EDGE_ANG;
     let positions = [[0.0; 3], [0.5, 0.0, 0.0]];
@@ -150,7 +156,8 @@ pub fn fcc(stiffness: f64, mass_u: f64) -> SpringCrystal {
     central(Cubic::Face, &[([1, 1, 0], stiffness)], mass_u)
 }
 
-/// Body-centred cubic with central springs K₁ to the eight first and K₂ to the six second neighbours.
+/// Body-centred cubic with central springs K₁ to the eight first and K₂ to the six second
+/// neighbours.
 pub fn bcc(first: f64, second: f64, mass_u: f64) -> SpringCrystal {
     let shells = [([1, 1, 1], first), ([2, 0, 0], second)];
     central(Cubic::Body, &shells, mass_u)
@@ -196,8 +203,8 @@ impl Cubic {
     }
 }
 
-/// A monatomic cubic crystal from one vector (half edges) and one tensor K (eV/Å²) a shell; the other vectors and
-/// tensors of the shell follow from the 48 cubic operations: K(gR) = g K(R) gᵀ.
+/// A monatomic cubic crystal from one vector (half edges) and one tensor K (eV/Å²) a shell; the
+/// other vectors and tensors of the shell follow from the 48 cubic operations: K(gR) = g K(R) gᵀ.
 pub fn cubic_crystal(
     lattice: Cubic,
     edge_ang: f64,
@@ -222,7 +229,8 @@ pub fn cubic_crystal(
     model
 }
 
-/// A signed permutation of the axes: component a of the image is `signs[a]` times component `axes[a]`.
+/// A signed permutation of the axes: component a of the image is `signs[a]` times component
+/// `axes[a]`.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct SignedPermutation {
     axes: [usize; 3],

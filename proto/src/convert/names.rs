@@ -7,7 +7,7 @@ use tarehouse_assay::report::{LikelyCause, Rule, Severity, Strength, Tag, Verdic
 use tarehouse_assay::submission::{CellProtocol, Digest};
 
 use super::ConvertError;
-use crate::v1;
+use crate::{limits, v1};
 
 /// Names of all rules, in the order of the contract.
 pub fn rule_names() -> Vec<String> {
@@ -23,6 +23,23 @@ pub fn likely_cause_names() -> Vec<String> {
         .iter()
         .map(|cause| v1::LikelyCause::from(*cause).as_str_name().to_owned())
         .collect()
+}
+
+/// The limits of the package format and of the transfers, as the server announces them. `upload_streams_max` is the
+/// server's own.
+pub fn limits_message(upload_streams_max: u32) -> v1::Limits {
+    let count = |limit: limits::Limit| u32::try_from(limit.max).unwrap_or(u32::MAX);
+    v1::Limits {
+        atoms_max: limits::ATOMS.max,
+        cells_max: limits::CELLS.max,
+        array_bytes_max: limits::ARRAY_BYTES.max,
+        manifest_bytes_max: limits::MANIFEST_BYTES.max,
+        chunk_bytes_max: limits::CHUNK_BYTES.max,
+        page_size_max: count(limits::PAGE_SIZE),
+        page_size_default: limits::PAGE_SIZE_DEFAULT,
+        temperatures_max: count(limits::TEMPERATURES),
+        upload_streams_max,
+    }
 }
 
 /// The rule of a name.

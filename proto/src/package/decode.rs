@@ -8,7 +8,8 @@ use tarehouse_assay::submission::Dielectric;
 use tarehouse_physics::ForceConstants;
 use tarehouse_physics::force_constants::ForceConstantsError;
 
-use super::manifest::{self, ArrayRole, Manifest, NamedArray};
+use super::manifest::{self, ArrayRole, Manifest, NamedArray, Parsed};
+use super::reader::shortened;
 use super::violation::Violations;
 use super::{ArrayIdentity, MANIFEST_FILE, npy, package_digest};
 use crate::limits;
@@ -21,7 +22,7 @@ use crate::limits;
 /// Everything that is wrong with manifest and arrays, at once.
 pub fn decode(manifest: &[u8], arrays: &[(&str, &[u8])]) -> Result<Submission, Violations> {
     let mut parsed = manifest::parse(manifest);
-    check_names(&parsed.arrays, arrays, &mut parsed.violations);
+    check_names(&mut parsed, arrays);
     let (mut constants, mut charges) = (None, None);
     for expected in &parsed.arrays {
         let Some((_, bytes)) = arrays.iter().find(|(name, _)| *name == expected.name) else {
@@ -48,14 +49,16 @@ pub fn decode(manifest: &[u8], arrays: &[(&str, &[u8])]) -> Result<Submission, V
     assemble(parts, digest, &constants, charges.as_deref())
 }
 
-/// The files that are there must be those that the manifest names.
-fn check_names(named: &[NamedArray], arrays: &[(&str, &[u8])], violations: &mut Violations) {
+/// The files that are there must be those that the manifest names, as far as its names could be read.
+fn check_names(parsed: &mut Parsed, arrays: &[(&str, &[u8])]) {
+    let (named, violations) = (&parsed.arrays, &mut parsed.violations);
     let mut seen = BTreeSet::new();
     for (name, _) in arrays {
+        let known = named.iter().any(|expected| expected.name == *name);
         if !seen.insert(*name) {
-            violations.add(name, "", "the file stands twice");
-        } else if !named.iter().any(|expected| expected.name == *name) {
-            violations.add(name, "", "the manifest names no such array");
+            violations.add(&shortened(name), "", "the file stands twice");
+        } else if parsed.names_complete && !known {
+            violations.add(&shortened(name), "", "the manifest names no such array");
         }
     }
     for expected in named {

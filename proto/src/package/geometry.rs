@@ -81,7 +81,8 @@ pub(super) fn check_components(reader: &mut Reader, identity: &Identity, parts: 
 /// No two atoms may be nearer than [`limits::OVERLAP_ANG`], periodic images included.
 ///
 /// For each pair, along each cell vector with plane spacing d, only images within r/d of the fractional difference can
-/// be nearer than r: usually none, so that the cost is that of n²/2 comparisons.
+/// be nearer than r: usually none, so that the cost is that of n²/2 comparisons. Ends early where the list of faults is
+/// full.
 pub(super) fn check_overlaps(reader: &mut Reader, crystal: &Crystal) {
     let reciprocal = crystal.reciprocal();
     let spacing: [f64; 3] =
@@ -98,6 +99,9 @@ pub(super) fn check_overlaps(reader: &mut Reader, crystal: &Crystal) {
     }
     let reach = spacing.map(|d| limits::OVERLAP_ANG / d);
     for (second, b) in crystal.positions().iter().enumerate() {
+        if reader.violations.is_full() {
+            return;
+        }
         for (first, a) in crystal.positions().iter().take(second).enumerate() {
             let Some(distance_ang) = nearest_image(crystal, &(b - a), &reach) else {
                 continue;

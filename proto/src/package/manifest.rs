@@ -128,6 +128,8 @@ pub(super) struct Parsed {
     pub(super) manifest: Option<Manifest>,
     /// In the order of names.
     pub(super) arrays: Vec<NamedArray>,
+    /// Whether every file name that the manifest should hold could be read.
+    pub(super) names_complete: bool,
     pub(super) violations: Violations,
 }
 
@@ -138,6 +140,7 @@ impl Parsed {
         Self {
             manifest: None,
             arrays: Vec::new(),
+            names_complete: false,
             violations,
         }
     }
@@ -167,6 +170,7 @@ pub(super) fn parse(bytes: &[u8]) -> Parsed {
     Parsed {
         manifest: None,
         arrays: Vec::new(),
+        names_complete: false,
         violations: reader.violations,
     }
 }
@@ -208,6 +212,8 @@ fn read(mut reader: Reader, document: &DeTable<'_>) -> Parsed {
     }
     let atom_count = crystal.elements.as_ref().map(|e| e.len() as u64);
     let cell_count = constants.supercell.as_ref().map(|s| s.cell_count() as u64);
+    let names_complete =
+        constants.file.is_some() && (dielectric.file.is_some() || !root.has("dielectric"));
     let mut arrays = Vec::new();
     if let Some(name) = constants.file {
         let shape = atom_count
@@ -243,6 +249,7 @@ fn read(mut reader: Reader, document: &DeTable<'_>) -> Parsed {
     Parsed {
         manifest: manifest.filter(|_| violations.is_empty()),
         arrays,
+        names_complete,
         violations,
     }
 }

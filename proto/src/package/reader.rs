@@ -350,19 +350,26 @@ fn nearest<'a>(name: &str, known: &[&'a str]) -> Option<&'a str> {
     (distance <= near.chars().count().div_ceil(3)).then_some(near)
 }
 
-/// Least number of insertions, deletions and replacements of one character (Levenshtein, Soviet Physics Doklady 10,
-/// 707 (1966)).
+/// Least number of insertions, deletions, replacements and exchanges of neighbouring characters, no piece changed twice
+/// (Damerau, Communications of the ACM 7, 171 (1964)). Upper and lower case count as the same.
 fn edit_distance(a: &str, b: &str) -> usize {
-    let b: Vec<char> = b.to_lowercase().chars().collect();
+    let [a, b] = [a, b].map(|text| text.to_lowercase().chars().collect::<Vec<char>>());
+    // before[j] and row[j] belong to the first i − 1 and i characters of a, and the first j of b.
+    let mut before: Vec<usize> = Vec::new();
     let mut row: Vec<usize> = (0..=b.len()).collect();
-    for (i, ca) in a.to_lowercase().chars().enumerate() {
+    for (i, ca) in a.iter().enumerate() {
         let mut next = vec![i + 1];
-        for ((cb, diagonal), above) in b.iter().zip(&row).zip(row.iter().skip(1)) {
-            let left = next.last().copied().unwrap_or_default();
-            let replaced = diagonal + usize::from(ca != *cb);
-            next.push(replaced.min(above + 1).min(left + 1));
+        for (j, cb) in b.iter().enumerate() {
+            let at = |row: &[usize], j: usize| row.get(j).copied().unwrap_or(usize::MAX - 1);
+            let mut least = at(&row, j) + usize::from(ca != cb);
+            least = least.min(at(&row, j + 1) + 1).min(at(&next, j) + 1);
+            let exchanged = i > 0 && j > 0 && a.get(i - 1) == Some(cb) && b.get(j - 1) == Some(ca);
+            if exchanged {
+                least = least.min(at(&before, j - 1) + 1);
+            }
+            next.push(least);
         }
-        row = next;
+        before = std::mem::replace(&mut row, next);
     }
     row.last().copied().unwrap_or_default()
 }
@@ -377,7 +384,8 @@ mod tests {
         for (a, b, distance) in [
             ("", "abc", 3),
             ("abc", "abc", 0),
-            ("abc", "acb", 2),
+            ("abc", "acb", 1),
+            ("abcd", "cdab", 4),
             ("mass", "masses", 2),
         ] {
             assert_eq!(edit_distance(a, b), distance, "{a} {b}");

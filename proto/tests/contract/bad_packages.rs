@@ -1,5 +1,6 @@
 //! Bad packages: each fault is named with its place, and all are named at once.
 
+use tarehouse_assay::submission::{CellProtocol, LongRange, Settings};
 use tarehouse_physics::units::{BOHR_ANGSTROM, EV_TO_KJ_PER_MOL, HARTREE_EV};
 use tarehouse_proto::package::{Violations, check_manifest, decode, npy};
 
@@ -10,7 +11,7 @@ fn faults(manifest: &str) -> Violations {
 }
 
 /// Asserts that the manifest has exactly one fault, with this key and these words in its message.
-fn one(manifest: &str, key: &str, words: &str) {
+pub(crate) fn one(manifest: &str, key: &str, words: &str) {
     let violations = faults(manifest);
     let text = violations.to_string();
     assert_eq!(violations.count(), 1, "{text}");
@@ -35,6 +36,23 @@ fn the_good_package_is_taken() {
     assert!(!summary.arrays[0].accepts_size(288 * 8));
     assert!(!summary.arrays[0].accepts_size(288 * 8 + npy::PREAMBLE_BYTES_MAX + 1));
     assert!(!summary.arrays[0].accepts_size(0));
+}
+
+#[test]
+fn what_is_left_out_has_its_default() {
+    let manifest = check_manifest(MANIFEST.as_bytes()).unwrap().manifest;
+    assert_eq!(manifest.cell_protocol, CellProtocol::Relaxed);
+    assert_eq!(manifest.cell_temperature_k, None);
+    assert_eq!(manifest.declaration.long_range, LongRange::Included);
+    assert_eq!(manifest.declaration.enforced, []);
+    assert!(!manifest.masses_declared);
+    assert_eq!(manifest.identity.contributor_key, None);
+    assert_eq!(manifest.energy.level, None);
+    assert_eq!(manifest.settings, Settings::default());
+    // An empty text counts as none.
+    let empty = with("form = \"II\"", "form = \"II\"\ncontributor_key = \"\"");
+    let manifest = check_manifest(empty.as_bytes()).unwrap().manifest;
+    assert_eq!(manifest.identity.contributor_key, None);
 }
 
 #[test]
@@ -107,213 +125,7 @@ fn every_required_key_is_missed() {
 }
 
 #[test]
-fn wrong_values_are_named() {
-    for (old, new, key, words) in [
-        ("package/1", "package/2", "format", "tarehouse-package/1"),
-        (
-            "\"fluoric nitride\"",
-            "\"\"",
-            "identity.compound",
-            "must not be empty",
-        ),
-        (
-            "\"fluoric nitride\"",
-            "\"x \"",
-            "identity.compound",
-            "end with a blank",
-        ),
-        (
-            "\"fluoric nitride\"",
-            "\"a\\u001b[2J\"",
-            "identity.compound",
-            "U+001B",
-        ),
-        ("\"F N\"", "\"F Xx\"", "identity.formula", "Xx"),
-        (
-            "formula_units = 2",
-            "formula_units = 0",
-            "identity.formula_units",
-            "between 1 and",
-        ),
-        (
-            "formula_units = 2",
-            "formula_units = 2.0",
-            "identity.formula_units",
-            "an integer",
-        ),
-        (
-            "\"angstrom\"",
-            "\"angstroem\"",
-            "crystal.length_unit",
-            "did you mean \"angstrom\"",
-        ),
-        (
-            "[5.0, 0.0, 0.0]",
-            "[5.0, nan, 0.0]",
-            "crystal.cell_vectors[0][1]",
-            "not finite",
-        ),
-        (
-            "[5.0, 0.0, 0.0]",
-            "[5.0, 0.0]",
-            "crystal.cell_vectors[0]",
-            "exactly 3",
-        ),
-        (
-            "[5.0, 0.0, 0.0]",
-            "[1001.0, 0.0, 0.0]",
-            "crystal.cell_vectors[0]",
-            "at most 1000",
-        ),
-        (
-            "\"N\", \"F\"]",
-            "\"N\", \"Fo\"]",
-            "crystal.elements[3]",
-            "\"Fo\" is not an element",
-        ),
-        (
-            "[0.75, 0.5, 0.5]",
-            "[0.75, 0.5, true]",
-            "crystal.positions[3][2]",
-            "a number",
-        ),
-        (
-            "[0.75, 0.5, 0.5]",
-            "[0.75, 0.5, inf]",
-            "crystal.positions[3][2]",
-            "not finite",
-        ),
-        (
-            "[0.75, 0.5, 0.5]",
-            "[0.75, 0.5, 1e9]",
-            "crystal.positions[3][2]",
-            "between",
-        ),
-        (
-            ", [0.75, 0.5, 0.5]",
-            "",
-            "crystal.positions",
-            "4 elements, but 3 positions",
-        ),
-        (
-            "constants.npy",
-            "../constants.npy",
-            "constants.file",
-            "plain file name",
-        ),
-        (
-            "constants.npy",
-            "constants.txt",
-            "constants.file",
-            "ending in .npy",
-        ),
-        (
-            "eV/angstrom^2",
-            "eV/A^2",
-            "constants.unit",
-            "hartree/bohr^2",
-        ),
-        ("[-1, 1, 0]", "[1, 1, 0]", "constants.supercell", "singular"),
-        (
-            "[-1, 1, 0]",
-            "[-1, 1025, 0]",
-            "constants.supercell[1][1]",
-            "between",
-        ),
-        (
-            "[1, 0, 0]]\n",
-            "[-9223372036854775808, 0, 0]]\n",
-            "constants.translations[1][0]",
-            "not between",
-        ),
-        (
-            "[1, 0, 0]]\n",
-            "[1, 1, 0]]\n",
-            "constants.translations[1]",
-            "the same modulo",
-        ),
-        (
-            ", [1, 0, 0]]\n",
-            "]\n",
-            "constants.translations",
-            "determinant ±2",
-        ),
-        (
-            "raw = true",
-            "raw = false",
-            "constants.raw",
-            "say in `enforced`",
-        ),
-        (
-            "raw = true",
-            "raw = true\nenforced = [\"space-group\"]",
-            "constants.raw",
-            "names conditions",
-        ),
-        (
-            "raw = true",
-            "raw = false\nenforced = [\"sum\"]",
-            "constants.enforced[0]",
-            "translation-sum",
-        ),
-        ("-40.5", "-inf", "energy.lattice_energy", "not finite"),
-        (
-            "unit = \"eV\"\n",
-            "unit = \"ev\"\n",
-            "energy.unit",
-            "did you mean \"eV\"",
-        ),
-    ] {
-        one(&with(old, new), key, words);
-    }
-}
-
-#[test]
-fn optional_tables_are_read_strictly() {
-    for (more, key, words) in [
-        (
-            "[settings]\nkind = \"dtf\"",
-            "settings.kind",
-            "did you mean \"dft\"",
-        ),
-        (
-            "[settings]\nstress_gpa = [[1,0,0],[0,1,0]]",
-            "settings.stress_gpa",
-            "exactly 3",
-        ),
-        (
-            "[settings]\norbital_cutoff_ev = -1",
-            "settings.orbital_cutoff_ev",
-            "between 0",
-        ),
-        (
-            "[claims]\nfree_energy = [[300.0]]",
-            "claims.free_energy[0]",
-            "exactly 2",
-        ),
-        (
-            "[claims]\nfree_energy = [[-1.0, 2.0]]",
-            "claims.free_energy[0][0]",
-            "between 0",
-        ),
-        (
-            "[dielectric]\npermittivity = [[1,0,0],[0,1,0],[0,0,1]]",
-            "dielectric.effective_charges",
-            "both or neither",
-        ),
-        (
-            "[[component]]\nname = \"a\"\nformula = \"F2 N\"\ncount = 1",
-            "component",
-            "add up to F2 N, not to F N",
-        ),
-        (
-            "[[component]]\nname = \"a\"\nformula = \"F N\"",
-            "component[0].count",
-            "missing",
-        ),
-    ] {
-        one(&format!("{MANIFEST}\n{more}\n"), key, words);
-    }
+fn the_dielectric_table_is_whole() {
     let only_file = format!("{MANIFEST}\n[dielectric]\neffective_charges = \"z.npy\"\n");
     let text = check_manifest(only_file.as_bytes())
         .unwrap_err()
@@ -407,7 +219,7 @@ fn atoms_must_not_overlap_under_periodicity() {
 fn absurd_cells_are_named() {
     let text = with("[5.0, 0.0, 0.0]", "[0.0, 0.0, 0.0]");
     one(&text, "crystal.cell_vectors", "span no volume");
-    let text = with("[5.0, 0.0, 0.0]", "[5.0, 900.0, 0.0]");
+    let text = with("[0.5, 6.0, 0.0]", "[500.0, 6.0, 0.0]");
     one(&text, "crystal.cell_vectors[0]", "less skewed");
 }
 
@@ -486,7 +298,7 @@ fn everything_is_reported_at_once() {
 
 #[test]
 fn the_list_of_faults_is_bounded() {
-    let many: String = (0..1000).map(|k| format!("key{k} = 1\n")).collect();
+    let many: String = (0..1000).fold(String::new(), |text, k| text + &format!("key{k} = 1\n"));
     let violations =
         check_manifest(format!("{MANIFEST}\n[settings]\n{many}").as_bytes()).unwrap_err();
     assert_eq!(violations.listed().len(), 200);

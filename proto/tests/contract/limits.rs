@@ -218,3 +218,14 @@ fn npy_header_bytes() {
         "{text}"
     );
 }
+
+#[test]
+fn the_announced_limits_are_those_that_hold() {
+    let announced = tarehouse_proto::convert::limits_message(7);
+    assert_eq!(announced.upload_streams_max, 7);
+    assert_eq!(announced.atoms_max, limits::ATOMS.max);
+    assert_eq!(announced.array_bytes_max, 2_147_483_648);
+    assert_eq!(announced.chunk_bytes_max, 524_288);
+    assert_eq!(u64::from(announced.page_size_max), limits::PAGE_SIZE.max);
+    assert!(announced.page_size_default <= announced.page_size_max);
+}

@@ -3,7 +3,7 @@
 use tarehouse_proto::package::npy;
 
 /// Manifest of a crystal of two invented diatomic molecules in a skewed cell, in a non-diagonal supercell of two cells.
-pub const MANIFEST: &str = r#"format = "tarehouse-package/1"
+pub(crate) const MANIFEST: &str = r#"format = "tarehouse-package/1"
 
 [identity]
 compound = "fluoric nitride"
@@ -32,22 +32,22 @@ unit = "eV"
 "#;
 
 /// Atoms in the cell of [`MANIFEST`].
-pub const ATOMS: usize = 4;
+pub(crate) const ATOMS: usize = 4;
 /// Shape of its constants.
-pub const SHAPE: [u64; 5] = [2, 4, 3, 4, 3];
+pub(crate) const SHAPE: [u64; 5] = [2, 4, 3, 4, 3];
 
 /// Distinct values, so that every mix-up shows.
-pub fn values() -> Vec<f64> {
+pub(crate) fn values() -> Vec<f64> {
     (0..288).map(|k| f64::from(k) * 0.125 - 7.0).collect()
 }
 
 /// The constants file of [`MANIFEST`].
-pub fn constants() -> Vec<u8> {
+pub(crate) fn constants() -> Vec<u8> {
     npy::write(&SHAPE, &values())
 }
 
 /// The manifest with one piece of its text replaced; the piece must be there exactly once.
-pub fn with(old: &str, new: &str) -> String {
+pub(crate) fn with(old: &str, new: &str) -> String {
     assert_eq!(MANIFEST.matches(old).count(), 1, "{old}");
     MANIFEST.replace(old, new)
 }

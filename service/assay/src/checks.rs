@@ -40,24 +40,37 @@ impl Finding {
     }
 
     pub(crate) fn measured(self, measured: f64, limit: Option<f64>, unit: &'static str) -> Self {
-        Self { measured: Some(measured), limit, unit, ..self }
+        Self {
+            measured: Some(measured),
+            limit,
+            unit,
+            ..self
+        }
     }
 
     pub(crate) fn at(self, location: impl Into<String>) -> Self {
-        Self { location: location.into(), ..self }
+        Self {
+            location: location.into(),
+            ..self
+        }
     }
 
     pub(crate) fn saying(self, message: impl Into<String>) -> Self {
-        Self { message: message.into(), ..self }
+        Self {
+            message: message.into(),
+            ..self
+        }
     }
 
     /// Likely cause and what to do next; kept only where something is wrong.
     pub(crate) fn because(self, cause: LikelyCause, remedy: impl Into<String>) -> Self {
         match self.severity {
             Severity::Pass => self,
-            Severity::Caution | Severity::Fail => {
-                Self { likely_cause: cause, remedy: remedy.into(), ..self }
-            }
+            Severity::Caution | Severity::Fail => Self {
+                likely_cause: cause,
+                remedy: remedy.into(),
+                ..self
+            },
         }
     }
 }
@@ -72,7 +85,10 @@ pub(crate) struct Limit {
 
 impl Limit {
     pub(crate) fn caution_only(caution: f64) -> Self {
-        Self { caution, fail: f64::INFINITY }
+        Self {
+            caution,
+            fail: f64::INFINITY,
+        }
     }
 
     fn judge(self, measured: f64) -> (Severity, f64) {

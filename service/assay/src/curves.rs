@@ -5,7 +5,8 @@ use tarehouse_physics::units::wavenumber_per_cm;
 
 use crate::checks::reach::decay_curve;
 use crate::report::Curves;
-use crate::workup::{GAMMA, PointSpectrum, Workup};
+use crate::spectra::{GAMMA, PointSpectrum};
+use crate::workup::Workup;
 
 /// All curves of a report.
 pub(crate) fn curves(workup: &Workup<'_>, spectra: &[PointSpectrum]) -> Curves {
@@ -27,8 +28,9 @@ fn density_of_states(workup: &Workup<'_>, spectra: &[PointSpectrum], curves: &mu
         edges.push(start + width * edges.len() as f64);
     }
     let mesh = &workup.mesh;
-    let full: Vec<&(f64, f64)> =
-        (0..mesh.point_count()).flat_map(|p| &by_point[mesh.representative(p)]).collect();
+    let full: Vec<&(f64, f64)> = (0..mesh.point_count())
+        .flat_map(|p| &by_point[mesh.representative(p)])
+        .collect();
     let wavenumbers: Vec<f64> = full.iter().map(|pair| pair.0).collect();
     let external: Vec<f64> = full.iter().map(|pair| pair.1).collect();
     let reciprocal = workup.crystal.reciprocal();
@@ -45,7 +47,10 @@ fn density_of_states(workup: &Workup<'_>, spectra: &[PointSpectrum], curves: &mu
             .unwrap_or_default()
     };
     let per_unit = |values: Vec<f64>| {
-        values.into_iter().map(|x| x / workup.submission.formula_units()).collect()
+        values
+            .into_iter()
+            .map(|x| x / workup.submission.formula_units())
+            .collect()
     };
     curves.dos_total = per_unit(density(None));
     curves.dos_external = per_unit(density(Some(&external)));

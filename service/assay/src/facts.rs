@@ -5,8 +5,9 @@ use tarehouse_physics::vibrations;
 
 use crate::checks::acoustic::{projection_change, velocities};
 use crate::report::{CrystalFacts, FreeEnergy, Mesh};
+use crate::spectra::PointSpectrum;
 use crate::verdict::judged;
-use crate::workup::{PointSpectrum, Workup};
+use crate::workup::Workup;
 
 pub(crate) fn facts(
     workup: &Workup<'_>,
@@ -58,6 +59,13 @@ pub(crate) fn mesh(workup: &Workup<'_>) -> Mesh {
     Mesh {
         divisions: workup.mesh.divisions(),
         point_count: count(workup.mesh.point_count()),
-        irreducible_count: count(workup.mesh.points().iter().filter(|p| p.multiplicity > 0).count()),
+        irreducible_count: count(
+            workup
+                .mesh
+                .points()
+                .iter()
+                .filter(|p| p.multiplicity > 0)
+                .count(),
+        ),
     }
 }

@@ -1,8 +1,8 @@
 //! Free energies of one formula unit on the policy's temperature grid, each with its bracket.
 //!
 //! The central value uses λ_eff for soft modes that are called numerical. The bracket's half width is
-//! 2.5 standard deviations of the null draws + ½|their bias| + 1.4 |F(other sharing) − F(nearest images)|
-//! + F_rms(k0 + k1 T) + a floor; multiples and floor from the policy. It holds the upload's own noise, aliasing and
+//! 2.5 standard deviations of the null draws, ½|their bias|, 1.4 |F(other sharing) − F(nearest images)|,
+//! F_rms(k0 + k1 T) and a floor, added up; multiples and floor from the policy. It holds the upload's own noise, aliasing and
 //! residual force. It does not hold the level of theory, anharmonicity or expansion.
 
 use rayon::prelude::*;
@@ -11,7 +11,8 @@ use tarehouse_physics::units::EV_TO_KJ_PER_MOL;
 use tarehouse_physics::vibrations;
 
 use crate::report::FreeEnergy;
-use crate::workup::{PointSpectrum, Workup, mean_and_deviation};
+use crate::spectra::{PointSpectrum, mean_and_deviation};
+use crate::workup::Workup;
 
 /// Free energies on the grid. Where a cluster is possibly physical there is no harmonic free energy: `defined` is false.
 pub(crate) fn free_energies(
@@ -28,7 +29,9 @@ pub(crate) fn free_energies(
     let draws: Vec<Vec<Vec<f64>>> = (0..workup.limits.soft_modes.noise_draws)
         .map(|k| spectra.iter().map(|s| s.drawn[k].clone()).collect())
         .collect();
-    grid.par_iter().map(|t| at(workup, &central, &other, &draws, *t)).collect()
+    grid.par_iter()
+        .map(|t| at(workup, &central, &other, &draws, *t))
+        .collect()
 }
 
 fn undefined(temperature_k: f64) -> FreeEnergy {
@@ -69,7 +72,8 @@ fn at(
     };
     let centre = value + bias * -0.5;
     let alias = (sum(other).free_energy - value.free_energy).abs();
-    let per_molecule = workup.molecules.molecules().len() as f64 / workup.submission.formula_units();
+    let per_molecule =
+        workup.molecules.molecules().len() as f64 / workup.submission.formula_units();
     let residual = residual_force(workup)
         * (limits.residual_force_k0 + limits.residual_force_k1_per_k * temperature_k);
     let half_width = limits.draw_multiple * deviation
@@ -95,5 +99,10 @@ fn residual_force(workup: &Workup<'_>) -> f64 {
     settings
         .force_residual_rms_ev_per_angstrom
         .or(settings.force_residual_max_ev_per_angstrom)
-        .unwrap_or(workup.limits.bracket.residual_force_undeclared_ev_per_angstrom)
+        .unwrap_or(
+            workup
+                .limits
+                .bracket
+                .residual_force_undeclared_ev_per_angstrom,
+        )
 }

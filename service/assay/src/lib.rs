@@ -1,17 +1,18 @@
 //! Judgement: checks, soft-mode tags, free-energy bracket and verdict. No input or output, no async.
 
-mod effective;
-mod noise;
-mod workup;
 mod checks;
 mod curves;
+mod effective;
 mod facts;
-mod verdict;
-mod soft_modes;
 mod free_energy;
+mod noise;
 pub mod policy;
 pub mod report;
+mod soft_modes;
+mod spectra;
 pub mod submission;
+mod verdict;
+mod workup;
 
 pub use policy::Policy;
 pub use report::Report;
@@ -75,10 +76,12 @@ pub fn examine(
     progress.advance("structure and constants", 0, 1);
     let workup = Workup::new(submission, &policy.limits)?;
     progress.advance("structure and constants", 1, 1);
-    let spectra = workup::spectra(&workup, &workup.draw_dynamics(), progress)?;
+    let spectra = spectra::spectra(&workup, progress)?;
     progress.advance("judgement", 0, 1);
     let soft_modes = soft_modes::soft_modes(&workup, &spectra)?;
-    let defined = soft_modes.iter().all(|mode| mode.tag == report::Tag::Numerical);
+    let defined = soft_modes
+        .iter()
+        .all(|mode| mode.tag == report::Tag::Numerical);
     let free_energy = free_energy::free_energies(&workup, &spectra, defined);
     let facts = facts::facts(&workup, &spectra, &free_energy);
     let width = verdict::judged_half_width(&workup, &free_energy);
@@ -86,7 +89,10 @@ pub fn examine(
     findings.extend(checks::blunders::check(&workup));
     findings.extend(checks::sums::check(&workup));
     findings.extend(checks::acoustic::check(&workup, &facts));
-    findings.extend(checks::reach::check(&workup, &soft_modes::truncated_dynamics(&workup))?);
+    findings.extend(checks::reach::check(
+        &workup,
+        &soft_modes::truncated_dynamics(&workup),
+    )?);
     findings.extend(checks::settings::check(&workup));
     findings.extend(checks::claims::check(&workup, &free_energy));
     findings.push(checks::long_range::check(&workup));

@@ -241,6 +241,10 @@ named_enum! {
 }
 
 /// What the upload says about its own noise.
+#[allow(
+    clippy::struct_excessive_bools,
+    reason = "independent signatures, each a field of the contract"
+)]
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Noise {
     /// Standard deviation of one constant, eV/Å².

@@ -3,6 +3,7 @@
 //! Points join where any of their symmetric copies are neighbours on the full mesh (26 neighbours, periodic). Rigid
 //! translations at Γ are left out. A tag is evidence, not proof.
 
+use tarehouse_physics::c64;
 use tarehouse_physics::dynamics::Dynamics;
 use tarehouse_physics::molecules::acoustic_overlap;
 use tarehouse_physics::qmesh::QMesh;
@@ -11,7 +12,8 @@ use tarehouse_physics::units::wavenumber_per_cm;
 use crate::ExamineError;
 use crate::noise::map_blocks;
 use crate::report::{SoftMode, Strength, Tag, TruncationChange};
-use crate::workup::{PointSpectrum, SoftBranch, Workup, eigen_error, lowest_wavenumber, show_q};
+use crate::spectra::{PointSpectrum, UncertainBranch};
+use crate::workup::{Workup, eigen_error, lowest_wavenumber, show_q};
 
 /// Points of one cluster, as places in the reduced mesh.
 type Cluster = Vec<usize>;
@@ -33,7 +35,10 @@ pub(crate) fn soft_modes(
     for cluster in clusters(&neighbours, spectra.len(), is_soft) {
         modes.push(tagged(workup, spectra, &truncated, &cluster)?);
     }
-    modes.sort_by(|a, b| a.lowest_wavenumber_per_cm.total_cmp(&b.lowest_wavenumber_per_cm));
+    modes.sort_by(|a, b| {
+        a.lowest_wavenumber_per_cm
+            .total_cmp(&b.lowest_wavenumber_per_cm)
+    });
     let below = workup.soft_below();
     let raw_is_soft = |point: usize| spectra[point].raw.first().is_some_and(|x| *x < below);
     for cluster in clusters(&neighbours, spectra.len(), raw_is_soft) {
@@ -44,84 +49,136 @@ pub(crate) fn soft_modes(
     Ok(modes)
 }
 
+/// A cluster with the modes that make it.
+struct Evidence<'a> {
+    workup: &'a Workup<'a>,
+    spectra: &'a [PointSpectrum],
+    cluster: &'a Cluster,
+}
+
+/// One soft mode of a cluster: its point and branch.
+type Member<'a> = (usize, &'a UncertainBranch);
+
+impl<'a> Evidence<'a> {
+    fn members(&self) -> impl Iterator<Item = Member<'a>> + 'a {
+        let spectra = self.spectra;
+        self.cluster
+            .iter()
+            .flat_map(move |p| spectra[*p].soft.iter().map(move |b| (*p, b)))
+    }
+
+    fn is_commensurate(&self, point: usize) -> bool {
+        self.workup.mesh.points()[point].commensurate
+    }
+
+    fn eigenvalue(&self, (point, branch): Member<'_>) -> f64 {
+        self.spectra[point].eigenvalues[branch.branch]
+    }
+
+    /// λ from where the null puts it, at most zero.
+    fn depth(&self, member: Member<'_>) -> f64 {
+        self.eigenvalue(member) - member.1.null_mean.min(0.0)
+    }
+
+    fn z(&self, member: Member<'_>) -> f64 {
+        self.depth(member) / member.1.spread
+    }
+
+    fn lowest(&self) -> Option<Member<'a>> {
+        self.members()
+            .min_by(|a, b| self.eigenvalue(*a).total_cmp(&self.eigenvalue(*b)))
+    }
+
+    /// The member at a sampled wave vector that lies deepest in units of its noise.
+    fn deepest_sampled(&self) -> Option<Member<'a>> {
+        self.members()
+            .filter(|(point, _)| self.is_commensurate(*point))
+            .min_by(|a, b| self.z(*a).total_cmp(&self.z(*b)))
+    }
+
+    /// How many standard deviations make a mode soft beyond noise.
+    fn significant(&self) -> f64 {
+        if self.workup.noise.summary.rounded {
+            SIGNIFICANT_Z_ROUNDED
+        } else {
+            SIGNIFICANT_Z
+        }
+    }
+
+    fn exclusion_limit(&self, branch: &UncertainBranch) -> f64 {
+        wavenumber_per_cm(self.significant() * branch.spread)
+    }
+
+    fn tag(&self, lowest: Member<'_>) -> (Tag, Strength, String) {
+        let significant = self.significant();
+        let beyond_noise = self.members().any(|m| self.z(m) < -significant);
+        let beyond_alias = self
+            .members()
+            .any(|m| self.depth(m) < -(significant * m.1.spread + m.1.alias));
+        if let Some(member) = self.deepest_sampled().filter(|m| self.z(*m) < -significant) {
+            let reason = format!(
+                "{} fits the supercell, so that nothing is interpolated there, and the mode lies {:.1} standard deviations \
+                 below zero",
+                show_q(&self.workup.mesh.points()[member.0].q),
+                -self.z(member)
+            );
+            return (Tag::PossiblyPhysical, Strength::Strong, reason);
+        }
+        let (tag, strength, reason) = if beyond_noise && self.workup.is_narrow() {
+            (Tag::Numerical, Strength::Weak, NARROW)
+        } else if beyond_alias {
+            (Tag::PossiblyPhysical, Strength::Weak, BEYOND_ALIAS)
+        } else if beyond_noise {
+            (Tag::Numerical, Strength::Weak, WITHIN_ALIAS)
+        } else {
+            let limit = self.exclusion_limit(lowest.1);
+            let reason = format!(
+                "within the noise of the upload; an instability weaker than {limit:.0}i cm⁻¹ cannot be excluded"
+            );
+            return (Tag::Numerical, Strength::Strong, reason);
+        };
+        (tag, strength, reason.to_owned())
+    }
+}
+
+const NARROW: &str = "only between sampled wave vectors, and the supercell is one molecule wide: a larger supercell decides";
+const BEYOND_ALIAS: &str = "between sampled wave vectors, but deeper than noise and aliasing explain: a larger supercell decides";
+const WITHIN_ALIAS: &str =
+    "between sampled wave vectors and within the scale of aliasing: a larger supercell decides";
+
 fn tagged(
     workup: &Workup<'_>,
     spectra: &[PointSpectrum],
     truncated: &[(f64, Dynamics)],
     cluster: &Cluster,
 ) -> Result<SoftMode, ExamineError> {
-    let value = |point: usize, branch: &SoftBranch| spectra[point].eigenvalues[branch.branch];
-    let all = || cluster.iter().flat_map(|p| spectra[*p].soft.iter().map(move |b| (*p, b)));
-    let lowest = all().min_by(|a, b| value(a.0, a.1).total_cmp(&value(b.0, b.1)));
-    let Some((point, branch)) = lowest else {
+    let evidence = Evidence {
+        workup,
+        spectra,
+        cluster,
+    };
+    let Some(lowest) = evidence.lowest() else {
         return vanished(workup, spectra, cluster);
     };
-    let z = |point: usize, b: &SoftBranch| (value(point, b) - b.null_mean.min(0.0)) / b.spread;
-    let significant =
-        if workup.noise.summary.rounded { SIGNIFICANT_Z_ROUNDED } else { SIGNIFICANT_Z };
-    let commensurate_point = |p: usize| workup.mesh.points()[p].commensurate;
-    let sampled = all()
-        .filter(|(p, _)| commensurate_point(*p))
-        .min_by(|a, b| z(a.0, a.1).total_cmp(&z(b.0, b.1)));
-    let beyond_noise = all().any(|(p, b)| z(p, b) < -significant);
-    let beyond_alias = all().any(|(p, b)| {
-        value(p, b) - b.null_mean.min(0.0) < -(significant * b.spread + b.alias)
-    });
-    let (tag, strength, reason) = match sampled {
-        Some((p, b)) if z(p, b) < -significant => (
-            Tag::PossiblyPhysical,
-            Strength::Strong,
-            format!(
-                "{} fits the supercell, so that nothing is interpolated there, and the mode lies {:.1} standard \
-                 deviations below zero",
-                show_q(&workup.mesh.points()[p].q),
-                -z(p, b)
-            ),
-        ),
-        _ if beyond_noise && workup.is_narrow() => (
-            Tag::Numerical,
-            Strength::Weak,
-            "only between sampled wave vectors, and the supercell is one molecule wide: a larger supercell decides"
-                .to_owned(),
-        ),
-        _ if beyond_alias => (
-            Tag::PossiblyPhysical,
-            Strength::Weak,
-            "between sampled wave vectors, but deeper than noise and aliasing explain: a larger supercell decides"
-                .to_owned(),
-        ),
-        _ if beyond_noise => (
-            Tag::Numerical,
-            Strength::Weak,
-            "between sampled wave vectors and within the scale of aliasing: a larger supercell decides".to_owned(),
-        ),
-        _ => (
-            Tag::Numerical,
-            Strength::Strong,
-            format!(
-                "within the noise of the upload; an instability weaker than {:.0}i cm⁻¹ cannot be excluded",
-                wavenumber_per_cm(significant * branch.spread)
-            ),
-        ),
-    };
+    let (point, branch) = lowest;
+    let (tag, strength, reason) = evidence.tag(lowest);
     let q = workup.mesh.points()[point].q;
-    let eigenvalue = value(point, branch);
-    let separation = (eigenvalue - branch.null_mean.min(0.0)).abs().max(f64::MIN_POSITIVE);
+    let depth = evidence.depth(lowest).abs().max(f64::MIN_POSITIVE);
     Ok(SoftMode {
         tag,
         strength,
-        lowest_wavenumber_per_cm: wavenumber_per_cm(eigenvalue),
+        lowest_wavenumber_per_cm: wavenumber_per_cm(evidence.eigenvalue(lowest)),
         raw_wavenumber_per_cm: lowest_wavenumber(&spectra[point].raw),
         q: q.into(),
         point_count: point_count(&workup.mesh, cluster),
-        commensurate: cluster.iter().any(|p| commensurate_point(*p) && !spectra[*p].soft.is_empty()),
-        z: Some(z(point, branch)),
-        alias_share: Some(branch.alias / separation),
+        commensurate: evidence.deepest_sampled().is_some(),
+        z: Some(evidence.z(lowest)),
+        alias_share: Some(branch.alias / depth),
         external_fraction: spectra[point].external[branch.branch],
         acoustic_overlap: acoustic_overlap(workup.crystal.masses_u(), &branch.vector),
         participation: participation(&branch.vector),
         truncation_changes: truncation_changes(truncated, &q, branch.branch)?,
-        exclusion_limit_per_cm: Some(wavenumber_per_cm(significant * branch.spread)),
+        exclusion_limit_per_cm: Some(evidence.exclusion_limit(branch)),
         reason,
     })
 }
@@ -133,9 +190,16 @@ fn vanished(
     cluster: &Cluster,
 ) -> Result<SoftMode, ExamineError> {
     let raw = |p: usize| spectra[p].raw.first().copied().unwrap_or(f64::INFINITY);
-    let point = cluster.iter().copied().min_by(|a, b| raw(*a).total_cmp(&raw(*b))).unwrap_or(0);
+    let point = cluster
+        .iter()
+        .copied()
+        .min_by(|a, b| raw(*a).total_cmp(&raw(*b)))
+        .unwrap_or(0);
     let q = workup.mesh.points()[point].q;
-    let modes = workup.raw_dynamics.modes(&q).map_err(eigen_error("raw soft modes"))?;
+    let modes = workup
+        .raw_dynamics
+        .modes(&q)
+        .map_err(eigen_error("raw soft modes"))?;
     let vector = modes.vector(0);
     Ok(SoftMode {
         tag: Tag::Numerical,
@@ -158,21 +222,31 @@ fn vanished(
 }
 
 /// Participation number Σ|e_i|²)² / Σ|e_i|⁴ over the number of atoms: 1 where all atoms move alike.
-fn participation(vector: &[tarehouse_physics::c64]) -> f64 {
-    let shares: Vec<f64> =
-        vector.chunks(3).map(|e| e.iter().map(|z| z.norm_sqr()).sum()).collect();
+fn participation(vector: &[c64]) -> f64 {
+    let shares: Vec<f64> = vector
+        .chunks(3)
+        .map(|e| e.iter().map(c64::norm_sqr).sum())
+        .collect();
     let sum: f64 = shares.iter().sum();
     let squares: f64 = shares.iter().map(|x| x * x).sum();
     sum * sum / (squares * shares.len() as f64)
 }
 
 fn point_count(mesh: &QMesh, cluster: &Cluster) -> u32 {
-    cluster.iter().map(|p| mesh.points()[*p].multiplicity.max(1)).sum()
+    cluster
+        .iter()
+        .map(|p| mesh.points()[*p].multiplicity.max(1))
+        .sum()
 }
 
 /// The constants with those below each of the policy's fractions of the largest dropped, sums restored.
 pub(crate) fn truncated_dynamics(workup: &Workup<'_>) -> Vec<(f64, Dynamics)> {
-    let largest = workup.projected.blocks().iter().map(nalgebra::Matrix3::amax).fold(0.0, f64::max);
+    let largest = workup
+        .projected
+        .blocks()
+        .iter()
+        .map(nalgebra::Matrix3::amax)
+        .fold(0.0, f64::max);
     let truncate = |fraction: f64| {
         let least = fraction * largest;
         let kept = map_blocks(&workup.projected, |_, block| {
@@ -181,7 +255,13 @@ pub(crate) fn truncated_dynamics(workup: &Workup<'_>) -> Vec<(f64, Dynamics)> {
         let restored = tarehouse_physics::projection::projected(&kept, &workup.group);
         workup.dynamics_of(&restored)
     };
-    workup.limits.reach.truncation_fractions.iter().map(|f| (*f, truncate(*f))).collect()
+    workup
+        .limits
+        .reach
+        .truncation_fractions
+        .iter()
+        .map(|f| (*f, truncate(*f)))
+        .collect()
 }
 
 fn truncation_changes(
@@ -192,7 +272,9 @@ fn truncation_changes(
     truncated
         .iter()
         .map(|(fraction, dynamics)| {
-            let values = dynamics.eigenvalues(q).map_err(eigen_error("truncated constants"))?;
+            let values = dynamics
+                .eigenvalues(q)
+                .map_err(eigen_error("truncated constants"))?;
             let value = values.get(branch).copied().unwrap_or_default();
             Ok(TruncationChange {
                 fraction: *fraction,
@@ -216,7 +298,9 @@ fn neighbours(mesh: &QMesh) -> Vec<Vec<usize>> {
             lists[b].push(a);
         }
     };
-    let steps: Vec<[i64; 3]> = (0..27_i64).map(|k| [k / 9 - 1, k / 3 % 3 - 1, k % 3 - 1]).collect();
+    let steps: Vec<[i64; 3]> = (0..27_i64)
+        .map(|k| [k / 9 - 1, k / 3 % 3 - 1, k % 3 - 1])
+        .collect();
     for full in 0..mesh.point_count() {
         let m = mesh.triple(full);
         for step in &steps {
@@ -225,7 +309,12 @@ fn neighbours(mesh: &QMesh) -> Vec<Vec<usize>> {
         }
     }
     // Commensurate points beside the mesh touch the corners of the mesh cell they lie in.
-    for (point, known) in mesh.points().iter().enumerate().filter(|(_, p)| p.multiplicity == 0) {
+    for (point, known) in mesh
+        .points()
+        .iter()
+        .enumerate()
+        .filter(|(_, p)| p.multiplicity == 0)
+    {
         for corner in 0..8_i64 {
             let m = std::array::from_fn(|axis| {
                 let scaled = (known.q[axis] * n[axis] as f64).floor();

@@ -37,9 +37,15 @@ pub(crate) fn decide(
         ));
     }
     for key in missing_required(workup) {
-        reasons.push(format!("settings.{key} is required for this kind of method and is missing"));
+        reasons.push(format!(
+            "settings.{key} is required for this kind of method and is missing"
+        ));
     }
-    let verdict = if reasons.is_empty() { Verdict::Accept } else { Verdict::Hold };
+    let verdict = if reasons.is_empty() {
+        Verdict::Accept
+    } else {
+        Verdict::Hold
+    };
     (verdict, reasons)
 }
 
@@ -62,7 +68,10 @@ pub(crate) fn judged<'a>(
 /// The finding that sums up the soft modes.
 pub(crate) fn soft_mode_finding(soft_modes: &[SoftMode]) -> Finding {
     let physical = soft_modes.iter().any(|m| m.tag == Tag::PossiblyPhysical);
-    let lowest = soft_modes.iter().map(|m| m.lowest_wavenumber_per_cm).fold(f64::INFINITY, f64::min);
+    let lowest = soft_modes
+        .iter()
+        .map(|m| m.lowest_wavenumber_per_cm)
+        .fold(f64::INFINITY, f64::min);
     if soft_modes.is_empty() {
         return Finding::new(Rule::SoftModes, Severity::Pass, "no soft modes on the mesh");
     }
@@ -100,14 +109,16 @@ pub(crate) fn bracket_finding(workup: &Workup<'_>, width: Option<f64>) -> Findin
         )
         .because(LikelyCause::Instability, "see soft-modes");
     };
-    let severity = if width > limit { Severity::Caution } else { Severity::Pass };
+    let severity = if width > limit {
+        Severity::Caution
+    } else {
+        Severity::Pass
+    };
     Finding::new(
         Rule::BracketWidth,
         severity,
-        format!(
-            "half width of the bracket at the judged temperature; it holds noise, aliasing and residual force, not the level of \
-             theory, anharmonicity or expansion"
-        ),
+        "half width of the bracket at the judged temperature; it holds noise, aliasing and residual force, not the level of \
+         theory, anharmonicity or expansion",
     )
     .measured(width, Some(limit), "kJ/mol")
     .because(LikelyCause::SmallSupercell, "a larger supercell, tighter forces and a better relaxed geometry narrow it")

@@ -1,10 +1,13 @@
-//! Density of states by the linear tetrahedron method, as exact differences of the integrated density.
+//! Density of states by the linear tetrahedron method, as exact differences of the integrated
+//! density.
 //!
-//! Every cell of a full Γ-centred mesh is split into six tetrahedra along its shortest main diagonal (Blöchl, Jepsen &
-//! Andersen, Phys. Rev. B 49, 16223 (1994)); inside each the frequency is linear (Lehmann & Taut, phys. stat. sol. (b)
-//! 54, 469 (1972)). What a bin holds is the integral over it, so that nothing is lost between the bins.
+//! Every cell of a full Γ-centred mesh is split into six tetrahedra along its shortest main
+//! diagonal (Blöchl, Jepsen & Andersen, Phys. Rev. B 49, 16223 (1994)); inside each the frequency
+//! is linear (Lehmann & Taut, phys. stat. sol. (b) 54, 469 (1972)). What a bin holds is the
+//! integral over it, so that nothing is lost between the bins.
 //!
-//! Branches are joined by their order at each point: crossings become avoided crossings, as in any linear scheme.
+//! Branches are joined by their order at each point: crossings become avoided crossings, as in any
+//! linear scheme.
 
 use nalgebra::{Matrix3, Vector3};
 use rayon::prelude::*;
@@ -16,9 +19,11 @@ pub struct BranchMesh<'a> {
     pub divisions: [usize; 3],
     /// Number of branches at each wave vector.
     pub branch_count: usize,
-    /// Signed wavenumbers in cm⁻¹, [point][branch], point = (i n₂ + j) n₃ + k, ascending within each point.
+    /// Signed wavenumbers in cm⁻¹, [point][branch], point = (i n₂ + j) n₃ + k, ascending within
+    /// each point.
     pub wavenumbers_per_cm: &'a [f64],
-    /// Weight of each mode in the same order, for a projected density; without it every mode counts one.
+    /// Weight of each mode in the same order, for a projected density; without it every mode counts
+    /// one.
     pub weights: Option<&'a [f64]>,
 }
 
@@ -73,10 +78,11 @@ pub enum DensityError {
 impl DensityOfStates {
     /// Counts the modes of `mesh` in the bins between consecutive `edges_per_cm` (cm⁻¹, rising).
     ///
-    /// The sum over all bins is the number of branches (or the mean over the mesh of Σ weights) if the edges cover every
-    /// frequency. A weighted tetrahedron uses the mean weight of its four corners. A flat band exactly on an edge
-    /// belongs to the bin below it, on the first edge to the first bin. `reciprocal` has the vectors b as rows, in any
-    /// unit: it only chooses the diagonal. Cost: six tetrahedra × points × branches × bins that a tetrahedron touches.
+    /// The sum over all bins is the number of branches (or the mean over the mesh of Σ weights) if
+    /// the edges cover every frequency. A weighted tetrahedron uses the mean weight of its four
+    /// corners. A flat band exactly on an edge belongs to the bin below it, on the first edge to
+    /// the first bin. `reciprocal` has the vectors b as rows, in any unit: it only chooses the
+    /// diagonal. Cost: six tetrahedra × points × branches × bins that a tetrahedron touches.
     /// Branches are summed in their order: the result does not depend on the number of threads.
     ///
     /// # Errors
@@ -175,8 +181,8 @@ fn faults(mesh: &BranchMesh<'_>, edges: &[f64]) -> Vec<DensityError> {
 /// Corner of a mesh cell as offsets of 0 or 1 along the three axes.
 type Corner = [usize; 3];
 
-/// The six tetrahedra of a mesh cell: each walks from one end of the diagonal to the other along the three axes, in one
-/// of the six orders.
+/// The six tetrahedra of a mesh cell: each walks from one end of the diagonal to the other along
+/// the three axes, in one of the six orders.
 fn tetrahedra_of_cell(divisions: [usize; 3], reciprocal: &Matrix3<f64>) -> [[Corner; 4]; 6] {
     const ORDERS: [[usize; 3]; 6] = [
         [0, 1, 2],
@@ -282,7 +288,8 @@ impl<'a> Counter<'a> {
             self.cut[index] += share * fraction_below(corners, edge);
             index += 1;
         }
-        // A flat tetrahedron on an edge is below that edge; on the very first it belongs to the first bin.
+        // A flat tetrahedron on an edge is below that edge; on the very first it belongs to the
+        // first bin.
         let flat_on_edge = index > 0 && self.edges[index - 1] >= corners[3];
         let passed = if flat_on_edge && index > 1 {
             index - 1
@@ -307,8 +314,8 @@ impl<'a> Counter<'a> {
     }
 }
 
-/// Fraction of a tetrahedron with ascending corner values e₁…e₄ in which the linear function is below e, e₁ < e < e₄
-/// (Blöchl, Jepsen & Andersen 1994, appendix A).
+/// Fraction of a tetrahedron with ascending corner values e₁…e₄ in which the linear function is
+/// below e, e₁ < e < e₄ (Blöchl, Jepsen & Andersen 1994, appendix A).
 fn fraction_below(corners: &[f64; 4], value: f64) -> f64 {
     let [e1, e2, e3, e4] = *corners;
     let x = value - e1;

@@ -248,11 +248,12 @@ impl ForceConstants {
         self.supercell.index_of(&[0, 0, 0])
     }
 
-    /// Largest absolute element of the self blocks Φ[0, i, i], eV/Å²: the scale to which residuals are compared.
+    /// Largest singular value of the self blocks Φ[0, i, i], eV/Å²: the scale to which residuals are compared. It does
+    /// not depend on the orientation of the axes.
     pub fn largest_self_constant(&self) -> f64 {
         let home = self.home_cell();
         (0..self.atom_count)
-            .map(|i| self.block(home, i, i).amax())
+            .map(|i| self.block(home, i, i).singular_values().max())
             .fold(0.0, f64::max)
     }
 }

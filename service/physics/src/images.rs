@@ -106,26 +106,73 @@ pub fn image_vector(image: &ImageTranslation) -> Vector3<f64> {
     Vector3::from(image.map(f64::from))
 }
 
+/// For every (l, i, j) the images of a pair with shares that fall off with distance.
+#[derive(Debug, Clone, PartialEq)]
+pub struct ImageShares {
+    atom_count: usize,
+    first: Vec<u32>,
+    shares: Vec<(ImageTranslation, f64)>,
+}
+
+impl ImageShares {
+    /// Shares ∝ d⁻⁸, summing to one; an atom with itself keeps its constant. Images whose share is below a thousandth of
+    /// the largest are left out. Cost O(L n²).
+    pub fn inverse_power(crystal: &Crystal, supercell: &Supercell) -> Self {
+        let n = crystal.atom_count();
+        let search = ImageSearch::new(crystal, supercell);
+        let rows: Vec<Vec<Vec<(ImageTranslation, f64)>>> = (0..supercell.cell_count() * n)
+            .into_par_iter()
+            .map(|row| {
+                (0..n)
+                    .map(|j| search.inverse_power(row / n, row % n, j))
+                    .collect()
+            })
+            .collect();
+        let mut first = vec![0];
+        let mut shares = Vec::new();
+        for pair in rows.into_iter().flatten() {
+            shares.extend_from_slice(&pair);
+            first.push(u32::try_from(shares.len()).unwrap_or(u32::MAX));
+        }
+        Self {
+            atom_count: n,
+            first,
+            shares,
+        }
+    }
+
+    /// Images of the pair and their shares.
+    pub fn of(&self, cell: usize, displaced: usize, response: usize) -> &[(ImageTranslation, f64)] {
+        let pair = (cell * self.atom_count + displaced) * self.atom_count + response;
+        &self.shares[self.first[pair] as usize..self.first[pair + 1] as usize]
+    }
+}
+
 /// Length of the shortest vector of the supercell lattice, Å: the first of a Minkowski-reduced basis.
 pub fn shortest_supercell_vector_ang(crystal: &Crystal, supercell: &Supercell) -> f64 {
     let vectors = ImageSearch::new(crystal, supercell).reduced * crystal.cell();
-    vectors.row_iter().map(|row| row.norm()).fold(f64::INFINITY, f64::min)
+    vectors
+        .row_iter()
+        .map(|row| row.norm())
+        .fold(f64::INFINITY, f64::min)
 }
 
-/// The search for images of a pair, also used with other ways of sharing.
+/// The search for images of a pair.
 #[derive(Debug, Clone)]
-pub struct ImageSearch<'a> {
+struct ImageSearch<'a> {
     crystal: &'a Crystal,
     supercell: &'a Supercell,
     /// Rows: a Minkowski-reduced basis of the supercell lattice in primitive coordinates.
     reduced: Matrix3<f64>,
     to_reduced: Matrix3<f64>,
+    /// Supercell translations within [`SEARCH_STEPS`], in primitive coordinates and in Å.
+    steps: Vec<(ImageTranslation, Vector3<f64>)>,
 }
 
 impl<'a> ImageSearch<'a> {
     /// Prepares the search: reduces the supercell lattice (Minkowski; Nguyen & Stehlé, ACM Trans. Algorithms 5, 46
     /// (2009)).
-    pub fn new(crystal: &'a Crystal, supercell: &'a Supercell) -> Self {
+    fn new(crystal: &'a Crystal, supercell: &'a Supercell) -> Self {
         let vectors = supercell.vectors(crystal.cell());
         let transform = moyo::base::Lattice::new(vectors)
             .minkowski_reduce()
@@ -136,16 +183,28 @@ impl<'a> ImageSearch<'a> {
         // The library keeps lattice vectors as columns, reduced = basis · transform; ours are rows.
         let reduced = transform.transpose() * supercell.matrix_f64();
         let to_reduced = reduced.try_inverse().unwrap_or_else(Matrix3::identity);
+        let axis = -SEARCH_STEPS..=SEARCH_STEPS;
+        let mut steps = Vec::new();
+        for x in axis.clone() {
+            for y in axis.clone() {
+                for z in axis.clone() {
+                    let step = Vector3::new(f64::from(x), f64::from(y), f64::from(z));
+                    let translation = reduced.tr_mul(&step);
+                    steps.push((to_integers(&translation), crystal.cartesian(&translation)));
+                }
+            }
+        }
         Self {
             crystal,
             supercell,
             reduced,
             to_reduced,
+            steps,
         }
     }
 
-    /// All images of the pair within [`SEARCH_STEPS`] of the nearest, as (translation, distance in Å).
-    pub fn candidates(
+    /// All images of the pair within [`SEARCH_STEPS`] of the nearest, as (translation, squared distance in Å²).
+    fn candidates(
         &self,
         cell: usize,
         displaced: usize,
@@ -157,17 +216,11 @@ impl<'a> ImageSearch<'a> {
         let start = Vector3::from(translation.map(|x| x as f64));
         let rounded = self.to_reduced.tr_mul(&(offset + start)).map(f64::round);
         let base = start - self.reduced.tr_mul(&rounded);
-        let steps = -SEARCH_STEPS..=SEARCH_STEPS;
-        steps.clone().flat_map(move |x| {
-            let steps = steps.clone();
-            steps.clone().flat_map(move |y| {
-                steps.clone().map(move |z| {
-                    let step = Vector3::new(f64::from(x), f64::from(y), f64::from(z));
-                    let image = base + self.reduced.tr_mul(&step);
-                    let distance = self.crystal.cartesian(&(offset + image)).norm();
-                    (to_integers(&image), distance)
-                })
-            })
+        let (base_image, base_vector) =
+            (to_integers(&base), self.crystal.cartesian(&(offset + base)));
+        self.steps.iter().map(move |(step, vector)| {
+            let image = std::array::from_fn(|axis| base_image[axis] + step[axis]);
+            (image, (base_vector + vector).norm_squared())
         })
     }
 
@@ -178,18 +231,42 @@ impl<'a> ImageSearch<'a> {
         response: usize,
         tie_tolerance_ang: f64,
     ) -> Vec<ImageTranslation> {
-        let candidates: Vec<_> = self.candidates(cell, displaced, response).collect();
-        let shortest = candidates
-            .iter()
-            .map(|(_, d)| *d)
-            .fold(f64::INFINITY, f64::min);
-        let mut images: Vec<ImageTranslation> = candidates
-            .into_iter()
-            .filter(|(_, distance)| *distance <= shortest + tie_tolerance_ang)
+        let squares = self
+            .candidates(cell, displaced, response)
+            .map(|pair| pair.1);
+        let shortest = squares.fold(f64::INFINITY, f64::min).sqrt();
+        let limit = (shortest + tie_tolerance_ang).powi(2);
+        let mut images: Vec<ImageTranslation> = self
+            .candidates(cell, displaced, response)
+            .filter(|(_, square)| *square <= limit)
             .map(|(image, _)| image)
             .collect();
         images.sort_unstable();
         images
+    }
+
+    fn inverse_power(&self, cell: usize, i: usize, j: usize) -> Vec<(ImageTranslation, f64)> {
+        /// Images nearer than this are the atom itself, Å².
+        const SAME_ATOM_ANG2: f64 = 1e-12;
+        const SMALLEST_SHARE: f64 = 1e-3;
+        let squares = self.candidates(cell, i, j).map(|pair| pair.1);
+        let shortest = squares.fold(f64::INFINITY, f64::min);
+        if shortest < SAME_ATOM_ANG2 {
+            let own = self
+                .candidates(cell, i, j)
+                .find(|(_, square)| *square < SAME_ATOM_ANG2);
+            return own.map(|(image, _)| vec![(image, 1.0)]).unwrap_or_default();
+        }
+        let mut shares: Vec<(ImageTranslation, f64)> = self
+            .candidates(cell, i, j)
+            .map(|(image, square)| (image, (shortest / square).powi(4)))
+            .filter(|(_, share)| *share > SMALLEST_SHARE)
+            .collect();
+        let total: f64 = shares.iter().map(|pair| pair.1).sum();
+        for pair in &mut shares {
+            pair.1 /= total;
+        }
+        shares
     }
 }
 

@@ -11,6 +11,7 @@ pub mod force_constants;
 pub mod gamma_point;
 pub mod images;
 pub mod long_wave;
+pub mod molecules;
 pub mod projection;
 pub mod qmesh;
 pub mod supercell;
@@ -18,7 +19,6 @@ pub mod symmetry;
 pub mod thermodynamics;
 pub mod units;
 pub mod vibrations;
-pub mod molecules;
 
 pub use crystal::Crystal;
 pub use elements::Element;

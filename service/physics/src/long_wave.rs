@@ -81,21 +81,23 @@ impl AcousticMatrix {
     }
 
     /// Eigenvalues with negative ones, and ones below `floor` times their mean, lifted to that floor; and whether
-    /// any was lifted.
+    /// any was negative. Where the mean itself is small or negative, `floor` times the stiffness of a typical direction
+    /// takes its place, so that what is returned is positive.
     pub fn floored_eigenvalues(&self, q: &Vector3<f64>, floor: f64) -> ([f64; 3], bool) {
         let values = self.eigenvalues(q);
-        // Without any positive stiffness the mean is taken over sizes, so that the floor stays positive.
         let mean = values.iter().sum::<f64>() / 3.0;
-        let scale = if mean > 0.0 {
-            mean
-        } else {
-            values.iter().map(|x| x.abs()).sum::<f64>() / 3.0
-        };
-        let least = floor * scale;
+        let typical = self.typical_stiffness() * q.norm_squared();
+        let least = floor * mean.max(floor * typical);
         (
             values.map(|x| x.max(least)),
             values.iter().any(|x| *x < 0.0),
         )
+    }
+
+    /// Mean size of the stiffness over directions and polarisations, eV/u; positive.
+    fn typical_stiffness(&self) -> f64 {
+        let traces = (0..3).map(|c| self.stiffness[c][c].iter().map(|x| x.abs()).sum::<f64>());
+        (traces.sum::<f64>() / 9.0).max(f64::MIN_POSITIVE)
     }
 
     /// The 3n − 3 optical modes at Γ: those orthogonal to the rigid translations.

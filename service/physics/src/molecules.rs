@@ -1,8 +1,8 @@
-//! Molecules of a crystal: which atoms are bonded, each molecule made whole across cell faces, and how much of a mode
-//! moves molecules as rigid bodies.
+//! Molecules of a crystal: which atoms are bonded, each molecule made whole across cell faces, and
+//! how much of a mode moves molecules as rigid bodies.
 //!
-//! Works for any cell and any choice of lattice translation for the written positions; the answers do not depend on
-//! them. What counts as a bond is the caller's tolerance.
+//! Works for any cell and any choice of lattice translation for the written positions; the answers
+//! do not depend on them. What counts as a bond is the caller's tolerance.
 
 mod bonds;
 
@@ -16,8 +16,9 @@ use crate::elements::Element;
 use crate::supercell::Translation;
 use bonds::ReducedLattice;
 
-/// Radius of gyration about an axis below which turning about it is no motion, Å. A linear molecule bent by the noise
-/// of a relaxation stays far below; the smallest of a truly bent molecule (water, about 0.18 Å) far above.
+/// Radius of gyration about an axis below which turning about it is no motion, Å. A linear molecule
+/// bent by the noise of a relaxation stays far below; the smallest of a truly bent molecule (water,
+/// about 0.18 Å) far above.
 const GYRATION_MIN_ANG: f64 = 0.05;
 
 /// How far a molecule extends.
@@ -29,7 +30,8 @@ pub enum Extent {
     Periodic(u8),
 }
 
-/// An atom of a molecule: the atom of the cell, and the lattice translation that puts it beside its neighbours.
+/// An atom of a molecule: the atom of the cell, and the lattice translation that puts it beside its
+/// neighbours.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Member {
     /// Index of the atom in the crystal.
@@ -64,8 +66,8 @@ impl Molecule {
         &self.formula
     }
 
-    /// Its formula in the order of Hill (J. Am. Chem. Soc. 22, 478 (1900)), as in `C2 H6 O`: carbon, then hydrogen if
-    /// there is carbon, then the rest by letter.
+    /// Its formula in the order of Hill (J. Am. Chem. Soc. 22, 478 (1900)), as in `C2 H6 O`:
+    /// carbon, then hydrogen if there is carbon, then the rest by letter.
     pub fn hill_formula(&self) -> String {
         let symbols = || self.formula.keys().map(|element| element.symbol());
         let has_carbon = symbols().any(|symbol| symbol == "C");
@@ -83,7 +85,8 @@ impl Molecule {
         parts.iter().map(text).collect::<Vec<_>>().join(" ")
     }
 
-    /// Centre of mass of the whole molecule, fractional, not wrapped. Of a periodic network, that of its repeat unit.
+    /// Centre of mass of the whole molecule, fractional, not wrapped. Of a periodic network, that
+    /// of its repeat unit.
     pub fn centre(&self) -> &Vector3<f64> {
         &self.centre
     }
@@ -98,8 +101,9 @@ pub struct Molecules {
 }
 
 impl Molecules {
-    /// The molecules of `crystal`: atoms are bonded if they are nearer than the sum of their covalent radii plus
-    /// `bond_tolerance_ang` (0.3 to 0.4 Å is common practice). Sorted by their first atom.
+    /// The molecules of `crystal`: atoms are bonded if they are nearer than the sum of their
+    /// covalent radii plus `bond_tolerance_ang` (0.3 to 0.4 Å is common practice). Sorted by their
+    /// first atom.
     ///
     /// Cost: atoms² × the lattice translations within a bond length.
     pub fn find(crystal: &Crystal, bond_tolerance_ang: f64) -> Self {
@@ -148,13 +152,15 @@ impl Molecules {
         self.centre_distance_ang
     }
 
-    /// Share of a mode that moves molecules as rigid bodies, 0 to 1: Σ over molecules and their rigid motions g of
-    /// |g†v|² / |e|², with v_i = e_i exp(2πi q·(x_i + R_i)) and R_i the translation that makes the molecule whole.
+    /// Share of a mode that moves molecules as rigid bodies, 0 to 1: Σ over molecules and their
+    /// rigid motions g of |g†v|² / |e|², with v_i = e_i exp(2πi q·(x_i + R_i)) and R_i the
+    /// translation that makes the molecule whole.
     ///
-    /// `eigenvector` has the 3n mass-weighted components of the atom-phase dynamical matrix, D_ij(q) = Σ Φ exp(iq·(R +
-    /// r_j − r_i))/√(m_i m_j), atom by atom; `q_frac` is in fractional reciprocal coordinates. The rigid motions are the
-    /// three translations and the rotations about the principal axes through the centre of mass (Eckart, Phys. Rev. 47,
-    /// 552 (1935)): two for a linear molecule, none for an atom, one about the axis of a chain, none for layers and
+    /// `eigenvector` has the 3n mass-weighted components of the atom-phase dynamical matrix,
+    /// D_ij(q) = Σ Φ exp(iq·(R + r_j − r_i))/√(m_i m_j), atom by atom; `q_frac` is in fractional
+    /// reciprocal coordinates. The rigid motions are the three translations and the rotations about
+    /// the principal axes through the centre of mass (Eckart, Phys. Rev. 47, 552 (1935)): two for a
+    /// linear molecule, none for an atom, one about the axis of a chain, none for layers and
     /// frameworks. Zero for a vector without length.
     pub fn external_fraction(
         &self,
@@ -173,8 +179,9 @@ impl Molecules {
     }
 }
 
-/// Squared overlap Σ_a |Σ_i √(m_i/M) e_ia|² / |e|² of a mode at Γ with the three rigid translations of the crystal,
-/// 0 to 1. `eigenvector` has the 3n mass-weighted components, atom by atom. Zero for a vector without length.
+/// Squared overlap Σ_a |Σ_i √(m_i/M) e_ia|² / |e|² of a mode at Γ with the three rigid translations
+/// of the crystal, 0 to 1. `eigenvector` has the 3n mass-weighted components, atom by atom. Zero
+/// for a vector without length.
 pub fn acoustic_overlap(masses_u: &[f64], eigenvector: &[c64]) -> f64 {
     debug_assert_eq!(eigenvector.len(), 3 * masses_u.len());
     let total_mass: f64 = masses_u.iter().sum();
@@ -331,8 +338,9 @@ fn rigid_part(
     translation + rotation
 }
 
-/// Axes about which a molecule may turn as a rigid body, with the moments of inertia about them, u Å². The motions
-/// √m (axis × arm) about principal axes are orthogonal to each other and to the translations.
+/// Axes about which a molecule may turn as a rigid body, with the moments of inertia about them, u
+/// Å². The motions √m (axis × arm) about principal axes are orthogonal to each other and to the
+/// translations.
 fn rotation_axes(
     molecule: &Molecule,
     crystal: &Crystal,

@@ -119,6 +119,7 @@ impl SpaceGroup {
     }
 
     /// The operations that map the supercell lattice onto itself, as a group of their own.
+    #[must_use]
     pub fn keeping(&self, supercell: &Supercell) -> Self {
         let kept = self
             .operations

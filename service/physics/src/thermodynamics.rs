@@ -1,14 +1,16 @@
 //! Thermodynamics of harmonic modes, and the curve of a free energy over temperature.
 //!
-//! Every function here is exact for one oscillator: nothing is dropped, floored or guessed. Soft and zero modes are the
-//! caller's business: a mode of zero energy has no finite free energy above 0 K, and an imaginary one has none at all.
+//! Every function here is exact for one oscillator: nothing is dropped, floored or guessed. Soft
+//! and zero modes are the caller's business: a mode of zero energy has no finite free energy above
+//! 0 K, and an imaginary one has none at all.
 
 use std::iter::Sum;
 use std::ops::{Add, AddAssign, Mul};
 
 use crate::units::{BOLTZMANN_EV_PER_K, phonon_energy_unit_ev};
 
-/// ħω/kT above which e^{−ħω/kT} is below the smallest double, so that thermal parts are exactly zero.
+/// ħω/kT above which e^{−ħω/kT} is below the smallest double, so that thermal parts are exactly
+/// zero.
 const REDUCED_ENERGY_MAX: f64 = 746.0;
 
 /// Thermodynamic functions of one mode, or sums of them.
@@ -25,11 +27,13 @@ pub struct Harmonic {
 }
 
 impl Harmonic {
-    /// One oscillator with its zero-point energy: F = ħω/2 + kT ln(1 − e^{−x}), U = ħω/2 + ħω/(eˣ − 1),
-    /// S = k[x/(eˣ − 1) − ln(1 − e^{−x})], C_V = k x² eˣ/(eˣ − 1)², with x = ħω/kT (Einstein, 1907).
+    /// One oscillator with its zero-point energy: F = ħω/2 + kT ln(1 − e^{−x}), U = ħω/2 + ħω/(eˣ −
+    /// 1), S = k[x/(eˣ − 1) − ln(1 − e^{−x})], C_V = k x² eˣ/(eˣ − 1)², with x = ħω/kT (Einstein,
+    /// 1907).
     ///
-    /// `energy_ev` is ħω in eV and must be positive, `temperature_k` must not be negative. At 0 K the limit is exact.
-    /// At ħω = 0 above 0 K the limits are returned (F = −∞, S = ∞, U = kT, C_V = k); outside the domain, NaN.
+    /// `energy_ev` is ħω in eV and must be positive, `temperature_k` must not be negative. At 0 K
+    /// the limit is exact. At ħω = 0 above 0 K the limits are returned (F = −∞, S = ∞, U = kT, C_V
+    /// = k); outside the domain, NaN.
     pub fn of_mode(energy_ev: f64, temperature_k: f64) -> Self {
         let thermal = Self::thermal_of_mode(energy_ev, temperature_k);
         let zero_point = zero_point_energy_ev(energy_ev);
@@ -40,8 +44,8 @@ impl Harmonic {
         }
     }
 
-    /// As [`Harmonic::of_mode`], but F and U without the zero-point energy: accurate relative to themselves however
-    /// small they are.
+    /// As [`Harmonic::of_mode`], but F and U without the zero-point energy: accurate relative to
+    /// themselves however small they are.
     pub fn thermal_of_mode(energy_ev: f64, temperature_k: f64) -> Self {
         let in_domain = energy_ev >= 0.0 && temperature_k >= 0.0;
         if !in_domain {
@@ -71,7 +75,8 @@ impl Harmonic {
         }
     }
 
-    /// One oscillator from its eigenvalue λ = ω² of the dynamical matrix, eV/Å²/u, positive; see [`Harmonic::of_mode`].
+    /// One oscillator from its eigenvalue λ = ω² of the dynamical matrix, eV/Å²/u, positive; see
+    /// [`Harmonic::of_mode`].
     pub fn of_eigenvalue(eigenvalue: f64, temperature_k: f64) -> Self {
         Self::of_mode(mode_energy_ev(eigenvalue), temperature_k)
     }
@@ -84,8 +89,8 @@ impl Harmonic {
             .sum()
     }
 
-    /// Weighted sum Σ_q w_q Σ_ν over wave vectors, each with its weight and energies ħω in eV, in the order given.
-    /// With weights that sum to one the result belongs to one primitive cell.
+    /// Weighted sum Σ_q w_q Σ_ν over wave vectors, each with its weight and energies ħω in eV, in
+    /// the order given. With weights that sum to one the result belongs to one primitive cell.
     pub fn of_mesh<'a>(
         points: impl IntoIterator<Item = (f64, &'a [f64])>,
         temperature_k: f64,
@@ -149,13 +154,14 @@ pub fn zero_point_energy_ev(energy_ev: f64) -> f64 {
     0.5 * energy_ev
 }
 
-/// Energy ħω in eV of a mode with eigenvalue λ = ω² of the dynamical matrix, eV/Å²/u; NaN for λ < 0.
+/// Energy ħω in eV of a mode with eigenvalue λ = ω² of the dynamical matrix, eV/Å²/u; NaN for λ <
+/// 0.
 pub fn mode_energy_ev(eigenvalue: f64) -> f64 {
     phonon_energy_unit_ev() * eigenvalue.sqrt()
 }
 
-/// ln(1 − e^{−x}) for x > 0, accurate at both ends: below ln 2 the difference 1 − e^{−x} is the delicate part, above it
-/// the logarithm near one.
+/// ln(1 − e^{−x}) for x > 0, accurate at both ends: below ln 2 the difference 1 − e^{−x} is the
+/// delicate part, above it the logarithm near one.
 fn ln_one_minus_exp_minus(x: f64) -> f64 {
     if x < std::f64::consts::LN_2 {
         (-(-x).exp_m1()).ln()
@@ -209,8 +215,8 @@ pub enum CurveError {
     },
 }
 
-/// A free energy F over temperature, known with its slope −S on a grid and interpolated between by cubic Hermite
-/// polynomials. Unit of energy: the caller's (S in the same unit per K).
+/// A free energy F over temperature, known with its slope −S on a grid and interpolated between by
+/// cubic Hermite polynomials. Unit of energy: the caller's (S in the same unit per K).
 #[derive(Debug, Clone, PartialEq)]
 pub struct FreeEnergyCurve {
     temperatures_k: Vec<f64>,
@@ -282,8 +288,8 @@ impl FreeEnergyCurve {
         &self.entropies
     }
 
-    /// F(T) between the grid points: the cubic with the right F and −S at both ends of the interval. Its error is
-    /// h⁴/384 times the largest fourth derivative of F.
+    /// F(T) between the grid points: the cubic with the right F and −S at both ends of the
+    /// interval. Its error is h⁴/384 times the largest fourth derivative of F.
     ///
     /// # Errors
     /// [`CurveError::Outside`].

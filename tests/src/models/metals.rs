@@ -1,4 +1,5 @@
-//! Born–von Kármán models of cubic metals from `reference/bvk_models.toml`; units, sources and marks are in that file.
+//! Born–von Kármán models of cubic metals from `reference/bvk_models.toml`; units, sources and
+//! marks are in that file.
 
 use nalgebra::Matrix3;
 use serde::Deserialize;
@@ -120,17 +121,29 @@ impl Metal {
         cubic_crystal(self.lattice(), self.a_angstrom, self.mass_u, &filled)
     }
 
-    fn tabulated(&self, point: &str) -> Vec<f64> {
-        let values = self.computed.rest.get(&format!("nu_THz_{point}"));
-        let values = values.and_then(toml::Value::as_array);
-        values
-            .into_iter()
-            .flatten()
-            .filter_map(toml::Value::as_float)
-            .collect()
+    /// A single output of the second program by its key; NaN where there is none.
+    pub fn computed_value(&self, key: &str) -> f64 {
+        let value = self.computed.rest.get(key);
+        value.and_then(toml::Value::as_float).unwrap_or(f64::NAN)
     }
 
-    /// K of one shell, eV/Å²: the listed elements, and those that follow by K = Kᵀ and the operations that keep R.
+    /// C₁₁, C₁₂, C₄₄ of the model in GPa, as the second program found them.
+    pub fn elastic_gpa(&self) -> Vec<f64> {
+        self.list("C11_C12_C44_GPa")
+    }
+
+    fn tabulated(&self, point: &str) -> Vec<f64> {
+        self.list(&format!("nu_THz_{point}"))
+    }
+
+    fn list(&self, key: &str) -> Vec<f64> {
+        let values = self.computed.rest.get(key).and_then(toml::Value::as_array);
+        let values = values.into_iter().flatten();
+        values.filter_map(toml::Value::as_float).collect()
+    }
+
+    /// K of one shell, eV/Å²: the listed elements, and those that follow by K = Kᵀ and the
+    /// operations that keep R.
     fn tensor(&self, vector: [i64; 3], shell: u32) -> Matrix3<f64> {
         let stabiliser: Vec<_> = cubic_operations()
             .into_iter()

@@ -61,7 +61,8 @@ fn thermal_energy_is_the_third_debye_function() {
 
 #[test]
 fn low_temperatures_follow_the_cubic_law() {
-    // C_V = (12π⁴/5) R (T/Θ)³; at t = 0.05 the law is 1.6e-5 high, at 0.1 2.7 % (computed with the table).
+    // C_V = (12π⁴/5) R (T/Θ)³; at t = 0.05 the law is 1.6e-5 high, at 0.1 2.7 % (computed with the
+    // table).
     let law = |t: f64| 12.0 * std::f64::consts::PI.powi(4) / 5.0 * t.powi(3);
     let capacity = |t: f64| 3.0 * debye_mean(t, |m| m.heat_capacity) / BOLTZMANN_EV_PER_K;
     assert_near("t = 0.02", capacity(0.02) / law(0.02), 1.0, 1e-9, 0.0);

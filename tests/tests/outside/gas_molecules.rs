@@ -1,5 +1,6 @@
-//! Vibrations of small molecules against `reference/molecules_gas.toml` (wavenumbers: Shimanouchi, NSRDS-NBS 39 (1972)
-//! and NIST; entropies: NASA Glenn polynomials), with rotation and translation of a rigid rotor beside them.
+//! Vibrations of small molecules against `reference/molecules_gas.toml` (wavenumbers: Shimanouchi,
+//! NSRDS-NBS 39 (1972) and NIST; entropies: NASA Glenn polynomials), with rotation and translation
+//! of a rigid rotor beside them.
 
 use std::collections::BTreeMap;
 use std::f64::consts::PI;

@@ -138,14 +138,14 @@ fn chain_thermodynamics_agrees_with_high_precision_numbers() {
             "F",
             energies(mean(|m| m.free_energy)),
             value("F"),
-            2e-12,
+            2e-11,
             0.0,
         );
         assert_near(
             "U",
             energies(mean(|m| m.internal_energy)),
             value("U"),
-            2e-12,
+            2e-11,
             0.0,
         );
         let entropy = mean(|m| m.entropy) / BOLTZMANN_EV_PER_K;
@@ -157,7 +157,8 @@ fn chain_thermodynamics_agrees_with_high_precision_numbers() {
 
 #[test]
 fn rings_have_their_closed_zero_point_energy() {
-    // ⟨|sin(πk/N)|⟩ = cot(π/2N)/N, and 1/(N sin(π/2N)) half-shifted: the mean of ω/ω_m on a mesh of N points.
+    // ⟨|sin(πk/N)|⟩ = cot(π/2N)/N, and 1/(N sin(π/2N)) half-shifted: the mean of ω/ω_m on a mesh of
+    // N points.
     let section = &exact()["chain_monatomic"];
     let model = chain(&[0.25], 0.25, 1.0);
     for n in [4_u32, 8, 32] {

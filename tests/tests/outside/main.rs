@@ -1,12 +1,16 @@
-//! Checks against the outside: constants of nature, tables of other people, closed forms of textbooks, measurements.
+//! Checks against the outside: constants of nature, tables of other people, closed forms of
+//! textbooks, measurements.
 //!
-//! Every value compared with stands in a file of `tests/reference/` whose head names its source, or beside its source
-//! in the test. Where a file carries a mark, only verified rows are asserted tightly.
+//! Every value compared with stands in a file of `tests/reference/` whose head names its source, or
+//! beside its source in the test. Where a file carries a mark, only verified rows are asserted
+//! tightly.
 
 #[cfg(test)]
 mod debye;
 #[cfg(test)]
 mod gas_molecules;
+#[cfg(test)]
+mod large;
 #[cfg(test)]
 mod lattices;
 #[cfg(test)]
@@ -19,6 +23,16 @@ mod oscillator;
 mod real_packages;
 #[cfg(test)]
 mod reference;
+#[cfg(test)]
+mod service;
+#[cfg(test)]
+mod service_closed_forms;
+#[cfg(test)]
+mod service_metals;
+#[cfg(test)]
+mod service_moments;
+#[cfg(test)]
+mod service_supercells;
 #[cfg(test)]
 mod units;
 #[cfg(test)]

@@ -1,5 +1,5 @@
-//! Born–von Kármán metals (`reference/bvk_models.toml`): constants fitted to neutron frequencies, outputs of a second
-//! program, and calorimetry (`reference/calorimetry.csv`).
+//! Born–von Kármán metals (`reference/bvk_models.toml`): constants fitted to neutron frequencies,
+//! outputs of a second program, and calorimetry (`reference/calorimetry.csv`).
 
 use nalgebra::{Matrix3, Vector3};
 use tarehouse_physics::thermodynamics::Harmonic;
@@ -93,8 +93,9 @@ fn zone_boundary_frequencies_agree_with_a_second_program() {
 
 #[test]
 fn folding_keeps_commensurate_wave_vectors() {
-    // Parlinski, Li & Kawazoe, Phys. Rev. Lett. 78, 4063 (1997): constants folded into a supercell give the exact
-    // matrix wherever S·q is integer, however far they reach. In a Bravais crystal D(q) = Σ_l Φ[l] cos(q·R_l)/m there.
+    // Parlinski, Li & Kawazoe, Phys. Rev. Lett. 78, 4063 (1997): constants folded into a supercell
+    // give the exact matrix wherever S·q is integer, however far they reach. In a Bravais crystal
+    // D(q) = Σ_l Φ[l] cos(q·R_l)/m there.
     let aluminium = &Metal::all()["Al_80K_axial8"];
     let model = aluminium.model();
     for supercell in [
@@ -134,8 +135,9 @@ fn entropies(name: &str) -> (f64, f64) {
 
 #[test]
 fn entropies_agree_with_calorimetry() {
-    // CODATA Key Values (1989) and NIST-JANAF (1998). Copper was measured with neutrons at 296 K; aluminium, sodium and
-    // lead below 100 K, so that their entropy must come out low; for niobium γ holds the phonon enhancement.
+    // CODATA Key Values (1989) and NIST-JANAF (1998). Copper was measured with neutrons at 296 K;
+    // aluminium, sodium and lead below 100 K, so that their entropy must come out low; for niobium
+    // γ holds the phonon enhancement.
     for name in ["Cu_296K_axial6", "Cu_296K_general4"] {
         let (found, measured) = entropies(name);
         assert_near(name, found, measured, 0.01, 0.0);

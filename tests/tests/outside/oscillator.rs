@@ -1,4 +1,5 @@
-//! One harmonic mode against tables made at 30 digits (`reference/einstein_table.csv`, `reference/mode_298K.csv`).
+//! One harmonic mode against tables made at 30 digits (`reference/einstein_table.csv`,
+//! `reference/mode_298K.csv`).
 
 use tarehouse_physics::thermodynamics::{Harmonic, zero_point_energy_ev};
 use tarehouse_physics::units::{BOLTZMANN_EV_PER_K, EV_TO_KJ_PER_MOL, EV_TO_PER_CM};
@@ -27,8 +28,8 @@ fn reduced_functions_agree_with_the_table_of_einstein_functions() {
                 ("Cv_over_k", full.heat_capacity / BOLTZMANN_EV_PER_K),
             ];
             for (column, found) in columns {
-                // F crosses zero near x = 1, and the table took its thermal part as a difference of 30-digit
-                // numbers: there the absolute error counts.
+                // F crosses zero near x = 1, and the table took its thermal part as a difference of
+                // 30-digit numbers: there the absolute error counts.
                 let absolute = match column {
                     "F_over_kT" => 1e-13,
                     "F_thermal_over_kT" => 1e-32,

@@ -1,4 +1,5 @@
-//! Molecules of the crystals in `fixtures/tight-binding/`, whose content is known (`fixtures/README.md`).
+//! Molecules of the crystals in `fixtures/tight-binding/`, whose content is known
+//! (`fixtures/README.md`).
 
 use std::path::Path;
 

@@ -1,5 +1,5 @@
-//! Constants and conversions against the SI and CODATA (`reference/constants.toml`). The tolerance of 1e-8 holds
-//! for any CODATA year.
+//! Constants and conversions against the SI and CODATA (`reference/constants.toml`). The tolerance
+//! of 1e-8 holds for any CODATA year.
 
 use tarehouse_physics::force_constants::ForceConstantUnit;
 use tarehouse_physics::units::*;
@@ -94,12 +94,17 @@ fn force_constant_units_convert_to_newton_per_metre() {
 
 #[test]
 fn worked_example_of_a_spring_in_fcc() {
-    // C3 of the reference collection: nearest-neighbour fcc, λ in K/m at X and L, in cm⁻¹.
+    // Computed with the conversions of `constants.toml`: nearest-neighbour fcc, λ in K/m at X and
+    // L, in cm⁻¹.
     let cases = [
         (
             1.0,
             1.0,
-            [(8.0, 1474.942_433), (4.0, 1042.941_796), (2.0, 737.471_216)],
+            [
+                (8.0, 1_474.942_433),
+                (4.0, 1_042.941_796),
+                (2.0, 737.471_216),
+            ],
         ),
         (
             2.5,

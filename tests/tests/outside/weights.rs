@@ -1,5 +1,5 @@
-//! Atomic weights against the table of the IUPAC (`reference/atomic_weights.csv`: Prohaska et al., Pure Appl. Chem. 94,
-//! 573 (2022)).
+//! Atomic weights against the table of the IUPAC (`reference/atomic_weights.csv`: Prohaska et al.,
+//! Pure Appl. Chem. 94, 573 (2022)).
 
 use tarehouse_physics::Element;
 

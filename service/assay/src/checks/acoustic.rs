@@ -24,7 +24,10 @@ fn raw(workup: &Workup<'_>) -> Finding {
     let acoustic = workup.raw_gamma.acoustic.map(wavenumber_per_cm);
     let worst = acoustic.iter().fold(0.0_f64, |m, x| m.max(x.abs()));
     let limits = &workup.limits.acoustic;
-    let limits = Limit { caution: limits.raw_caution_per_cm, fail: limits.raw_fail_per_cm };
+    let limits = Limit {
+        caution: limits.raw_caution_per_cm,
+        fail: limits.raw_fail_per_cm,
+    };
     Finding::graded(Rule::AcousticRaw, worst, "cm⁻¹", limits)
         .at("Γ")
         .saying(format!("rigid translations of the raw constants lie at {}", show(&acoustic)))
@@ -44,12 +47,17 @@ fn projected(workup: &Workup<'_>) -> Finding {
     let acoustic: Vec<f64> = values.iter().map(|x| wavenumber_per_cm(*x)).collect();
     let worst = acoustic.iter().fold(0.0_f64, |m, x| m.max(x.abs()));
     let limits = &workup.limits.acoustic;
-    let limits =
-        Limit { caution: limits.projected_caution_per_cm, fail: limits.projected_fail_per_cm };
+    let limits = Limit {
+        caution: limits.projected_caution_per_cm,
+        fail: limits.projected_fail_per_cm,
+    };
     Finding::graded(Rule::AcousticProjected, worst, "cm⁻¹", limits)
         .at("Γ")
         .saying("rigid translations after the sums are enforced; what is left is rounding")
-        .because(LikelyCause::Unknown, "report this: the projection itself did not close")
+        .because(
+            LikelyCause::Unknown,
+            "report this: the projection itself did not close",
+        )
 }
 
 fn projection_shift(workup: &Workup<'_>, facts: &CrystalFacts) -> Finding {
@@ -59,11 +67,16 @@ fn projection_shift(workup: &Workup<'_>, facts: &CrystalFacts) -> Finding {
         facts.projection_relative_norm, facts.projection_largest_ev_per_ang2
     );
     match facts.projection_free_energy_kj_per_mol {
-        Some(change) => {
-            Finding::graded(Rule::ProjectionShift, change.abs(), "kJ/mol", Limit::caution_only(limit))
-                .saying(format!("{words}; the free energy at the judged temperature by {change:+.3} kJ/mol"))
-                .because(LikelyCause::ScfNoise, "reduce the residuals of the sums")
-        }
+        Some(change) => Finding::graded(
+            Rule::ProjectionShift,
+            change.abs(),
+            "kJ/mol",
+            Limit::caution_only(limit),
+        )
+        .saying(format!(
+            "{words}; the free energy at the judged temperature by {change:+.3} kJ/mol"
+        ))
+        .because(LikelyCause::ScfNoise, "reduce the residuals of the sums"),
         None => Finding::new(
             Rule::ProjectionShift,
             Severity::Pass,
@@ -89,7 +102,9 @@ pub(crate) fn projection_change(workup: &Workup<'_>) -> (f64, f64) {
 
 fn sound_velocity(workup: &Workup<'_>, facts: &CrystalFacts) -> Finding {
     let [slow, fast] = workup.limits.acoustic.sound_velocity_m_per_s;
-    let range = facts.sound_velocity_min_m_per_s.zip(facts.sound_velocity_max_m_per_s);
+    let range = facts
+        .sound_velocity_min_m_per_s
+        .zip(facts.sound_velocity_max_m_per_s);
     match range {
         None => Finding::new(
             Rule::SoundVelocity,
@@ -98,8 +113,16 @@ fn sound_velocity(workup: &Workup<'_>, facts: &CrystalFacts) -> Finding {
         ),
         Some((least, largest)) => {
             let outside = least < slow || largest > fast;
-            let severity = if outside { Severity::Caution } else { Severity::Pass };
-            let (measured, limit) = if largest > fast { (largest, fast) } else { (least, slow) };
+            let severity = if outside {
+                Severity::Caution
+            } else {
+                Severity::Pass
+            };
+            let (measured, limit) = if largest > fast {
+                (largest, fast)
+            } else {
+                (least, slow)
+            };
             Finding::new(
                 Rule::SoundVelocity,
                 severity,
@@ -123,8 +146,14 @@ fn elastic_stability(workup: &Workup<'_>) -> Finding {
     let (value, direction) = directions()
         .iter()
         .map(|d| (workup.acoustic.eigenvalues(d)[0], *d))
-        .fold((f64::INFINITY, nalgebra::Vector3::zeros()), |a, b| if b.0 < a.0 { b } else { a });
-    let severity = if value < 0.0 { Severity::Caution } else { Severity::Pass };
+        .fold((f64::INFINITY, nalgebra::Vector3::zeros()), |a, b| {
+            if b.0 < a.0 { b } else { a }
+        });
+    let severity = if value < 0.0 {
+        Severity::Caution
+    } else {
+        Severity::Pass
+    };
     let words = if value < 0.0 {
         "long waves in some direction have negative stiffness; in the Γ correction it was lifted to the policy's floor"
     } else {
@@ -134,10 +163,15 @@ fn elastic_stability(workup: &Workup<'_>) -> Finding {
     Finding::new(
         Rule::ElasticStability,
         severity,
-        format!("{words}. Term linear in q, which exact constants do not have: {linear:.1e} eV/Å/u"),
+        format!(
+            "{words}. Term linear in q, which exact constants do not have: {linear:.1e} eV/Å/u"
+        ),
     )
     .measured(value, Some(0.0), "eV/u")
-    .at(format!("along ({:.2}, {:.2}, {:.2})", direction.x, direction.y, direction.z))
+    .at(format!(
+        "along ({:.2}, {:.2}, {:.2})",
+        direction.x, direction.y, direction.z
+    ))
     .because(
         LikelyCause::SmallSupercell,
         "compare with a larger supercell: a long wave is never sampled by one, always extrapolated",
@@ -147,7 +181,13 @@ fn elastic_stability(workup: &Workup<'_>) -> Finding {
 fn show(values: &[f64; 3]) -> String {
     let words: Vec<String> = values
         .iter()
-        .map(|x| if *x < 0.0 { format!("{:.2}i", -x) } else { format!("{x:.2}") })
+        .map(|x| {
+            if *x < 0.0 {
+                format!("{:.2}i", -x)
+            } else {
+                format!("{x:.2}")
+            }
+        })
         .collect();
     format!("{} cm⁻¹", words.join(", "))
 }

@@ -28,13 +28,25 @@ fn self_constants(workup: &Workup<'_>) -> Finding {
     let home = raw.home_cell();
     let trace = |i: usize| raw.block(home, i, i).trace() / 3.0;
     let n = raw.atom_count();
-    let worst = (0..n).min_by(|a, b| trace(*a).total_cmp(&trace(*b))).unwrap_or(0);
+    let worst = (0..n)
+        .min_by(|a, b| trace(*a).total_cmp(&trace(*b)))
+        .unwrap_or(0);
     let negative = (0..n).filter(|i| trace(*i) <= 0.0).count();
-    let severity = if negative > 0 { Severity::Fail } else { Severity::Pass };
-    let (cause, remedy) = if negative == n {
-        (LikelyCause::SignError, "turn the sign: a constant is plus the second derivative of the energy, minus that of the force")
+    let severity = if negative > 0 {
+        Severity::Fail
     } else {
-        (LikelyCause::ZeroedBlock, "compute the missing displacements")
+        Severity::Pass
+    };
+    let (cause, remedy) = if negative == n {
+        (
+            LikelyCause::SignError,
+            "turn the sign: a constant is plus the second derivative of the energy, minus that of the force",
+        )
+    } else {
+        (
+            LikelyCause::ZeroedBlock,
+            "compute the missing displacements",
+        )
     };
     Finding::new(
         Rule::SelfConstants,
@@ -49,7 +61,11 @@ fn self_constants(workup: &Workup<'_>) -> Finding {
 fn bond_stiffness(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
     let rule = Rule::BondStiffness;
     if bonds.is_empty() {
-        return Finding::new(rule, Severity::Pass, "no molecular bonds whose stiffness could be judged");
+        return Finding::new(
+            rule,
+            Severity::Pass,
+            "no molecular bonds whose stiffness could be judged",
+        );
     }
     let limits = &workup.limits.blunders;
     let given = Arrangement::as_given(&workup.submission.constants);
@@ -60,7 +76,11 @@ fn bond_stiffness(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
     let hydrogen_off = hydrogen.is_some_and(|k| k < least || k > largest);
     let bad = share < limits.bond_share_min || hydrogen_off;
     let severity = if bad { Severity::Fail } else { Severity::Pass };
-    let (cause, remedy) = if bad { bond_blunder(workup, bonds, &given) } else { Default::default() };
+    let (cause, remedy) = if bad {
+        bond_blunder(workup, bonds, &given)
+    } else {
+        Default::default()
+    };
     Finding::new(
         rule,
         severity,
@@ -84,13 +104,19 @@ fn bond_blunder(
     let limits = &workup.limits.blunders;
     let median = bonds.median_constant(given);
     if median < 0.0 && bonds.share_stiff(&given.negated(), limits, 1.0) >= limits.bond_share_min {
-        return (Some(LikelyCause::SignError), "turn the sign of all constants".to_owned());
+        return (
+            Some(LikelyCause::SignError),
+            "turn the sign of all constants".to_owned(),
+        );
     }
     let along = bonds.share_along(given, limits);
-    let permuted = given.axis_permutations().map(|a| bonds.share_along(&a, limits));
+    let permuted = given
+        .axis_permutations()
+        .map(|a| bonds.share_along(&a, limits));
     let best = permuted.into_iter().fold(0.0, f64::max);
     if best > along + limits.alternative_gain {
-        let remedy = "use the Cartesian axes of cell_vectors in the constants, in the order x, y, z";
+        let remedy =
+            "use the Cartesian axes of cell_vectors in the constants, in the order x, y, z";
         return (Some(LikelyCause::PermutedAxes), remedy.to_owned());
     }
     if along >= limits.bond_share_min {
@@ -99,11 +125,17 @@ fn bond_blunder(
             let factor = unit.in_ev_per_ang2() / declared.in_ev_per_ang2();
             *unit != declared && bonds.share_stiff(given, limits, factor) >= limits.bond_share_min
         };
-        let units: Vec<&str> =
-            ForceConstantUnit::ALL.iter().filter(|u| fits(u)).map(|u| u.name()).collect();
+        let units: Vec<&str> = ForceConstantUnit::ALL
+            .iter()
+            .filter(|u| fits(u))
+            .map(|u| u.name())
+            .collect();
         let remedy = match units.as_slice() {
             [] => format!("check constants.unit: {} was declared", declared.name()),
-            names => format!("check constants.unit: the values look like {}", names.join(" or ")),
+            names => format!(
+                "check constants.unit: the values look like {}",
+                names.join(" or ")
+            ),
         };
         return (Some(LikelyCause::WrongUnit), remedy);
     }
@@ -118,15 +150,25 @@ fn locality(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
     let share = bonds.share_near(&given, workup, limits.strong_block_distance_angstrom);
     let spread = given.mean_distance(workup);
     let alternatives = [
-        (LikelyCause::SwappedIndexOrder, given.mirrored().mean_distance(workup)),
-        (LikelyCause::WrongSupercell, arrangement::best_supercell_reading(workup)),
+        (
+            LikelyCause::SwappedIndexOrder,
+            given.mirrored().mean_distance(workup),
+        ),
+        (
+            LikelyCause::WrongSupercell,
+            arrangement::best_supercell_reading(workup),
+        ),
     ];
     let better = alternatives
         .into_iter()
         .filter(|(_, other)| *other < (1.0 - limits.locality_gain) * spread)
         .min_by(|a, b| a.1.total_cmp(&b.1));
     let far = share.is_some_and(|s| s < limits.strong_share_min);
-    let severity = if far || better.is_some() { Severity::Fail } else { Severity::Pass };
+    let severity = if far || better.is_some() {
+        Severity::Fail
+    } else {
+        Severity::Pass
+    };
     let (cause, remedy) = match better {
         Some((cause @ LikelyCause::SwappedIndexOrder, _)) => (
             cause,
@@ -145,7 +187,12 @@ fn locality(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
     };
     let shown = share.map_or_else(
         || "no bonded atoms to judge".to_owned(),
-        |s| format!("the strongest constant of {:.0} % of the bonded atoms belongs to a near neighbour", 100.0 * s),
+        |s| {
+            format!(
+                "the strongest constant of {:.0} % of the bonded atoms belongs to a near neighbour",
+                100.0 * s
+            )
+        },
     );
     Finding::new(
         Rule::Locality,
@@ -167,7 +214,10 @@ fn block_pattern(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
         None => Finding::new(
             Rule::BlockPattern,
             Severity::Pass,
-            format!("none of {} blocks is missing or stands twice", raw.blocks().len()),
+            format!(
+                "none of {} blocks is missing or stands twice",
+                raw.blocks().len()
+            ),
         ),
         Some((cause, place)) => {
             let words = match cause {
@@ -176,7 +226,10 @@ fn block_pattern(workup: &Workup<'_>, bonds: &Bonds) -> Finding {
             };
             Finding::new(Rule::BlockPattern, Severity::Fail, words)
                 .at(place)
-                .because(cause, "check how the array was put together from the single displacements")
+                .because(
+                    cause,
+                    "check how the array was put together from the single displacements",
+                )
         }
     }
 }

@@ -17,16 +17,33 @@ pub(crate) fn check(workup: &Workup<'_>, energies: &[FreeEnergy]) -> Vec<Finding
     let defined = energies.first().is_some_and(|f| f.defined);
     if let Some(claimed) = claims.zero_point_energy_ev {
         let limit = workup.limits.claims.zero_point_caution_kj_per_mol;
-        let here = energies.first().filter(|_| defined).map(|f| f.central_kj_per_mol);
+        let here = energies
+            .first()
+            .filter(|_| defined)
+            .map(|f| f.central_kj_per_mol);
         let place = "claims.zero_point_energy".to_owned();
-        findings.push(compared(Rule::ClaimZeroPoint, place, claimed * to_kj, here, limit));
+        findings.push(compared(
+            Rule::ClaimZeroPoint,
+            place,
+            claimed * to_kj,
+            here,
+            limit,
+        ));
     }
     let curve = defined.then(|| curve(energies)).flatten();
     for (index, (temperature_k, claimed)) in claims.free_energy_ev.iter().enumerate() {
         let limit = workup.limits.claims.free_energy_caution_kj_per_mol;
-        let here = curve.as_ref().and_then(|c| c.free_energy(*temperature_k).ok());
+        let here = curve
+            .as_ref()
+            .and_then(|c| c.free_energy(*temperature_k).ok());
         let place = format!("claims.free_energy[{index}], {temperature_k} K");
-        findings.push(compared(Rule::ClaimFreeEnergy, place, claimed * to_kj, here, limit));
+        findings.push(compared(
+            Rule::ClaimFreeEnergy,
+            place,
+            claimed * to_kj,
+            here,
+            limit,
+        ));
     }
     findings
 }
@@ -54,14 +71,18 @@ fn compared(
             "claimed {claimed_kj:.3} kJ/mol per formula unit; there is no value here to compare with (no harmonic free energy, \
              or a temperature outside the grid)"
         );
-        return Finding::new(rule, Severity::Caution, message).at(place).because(
-            LikelyCause::DifferentTreatment,
-            "claim a temperature on the policy's grid, and see the soft modes",
-        );
+        return Finding::new(rule, Severity::Caution, message)
+            .at(place)
+            .because(
+                LikelyCause::DifferentTreatment,
+                "claim a temperature on the policy's grid, and see the soft modes",
+            );
     };
     let difference = (claimed_kj - here).abs();
     Finding::graded(rule, difference, "kJ/mol", Limit::caution_only(limit))
         .at(place)
-        .saying(format!("claimed {claimed_kj:.3}, recomputed {here:.3} kJ/mol per formula unit"))
+        .saying(format!(
+            "claimed {claimed_kj:.3}, recomputed {here:.3} kJ/mol per formula unit"
+        ))
         .because(LikelyCause::DifferentTreatment, REMEDY)
 }

@@ -6,7 +6,10 @@ use crate::workup::Workup;
 
 pub(crate) fn check(workup: &Workup<'_>) -> Finding {
     let submission = workup.submission;
-    let ionic = submission.components.iter().any(|component| component.charge != 0);
+    let ionic = submission
+        .components
+        .iter()
+        .any(|component| component.charge != 0);
     let removed = submission.declaration.long_range == LongRange::Removed;
     let (severity, message) = match (&submission.dielectric, removed, ionic) {
         (Some(_), _, _) => (
@@ -30,5 +33,8 @@ pub(crate) fn check(workup: &Workup<'_>) -> Finding {
     };
     Finding::new(Rule::LongRange, severity, message)
         .at("dielectric")
-        .because(LikelyCause::MissingSetting, "give [dielectric] with effective charges and permittivity")
+        .because(
+            LikelyCause::MissingSetting,
+            "give [dielectric] with effective charges and permittivity",
+        )
 }

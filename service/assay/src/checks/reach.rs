@@ -13,7 +13,11 @@ pub(crate) fn check(
     workup: &Workup<'_>,
     truncated: &[(f64, Dynamics)],
 ) -> Result<Vec<Finding>, ExamineError> {
-    Ok(vec![reach(workup), supercell_size(workup), truncation(workup, truncated)?])
+    Ok(vec![
+        reach(workup),
+        supercell_size(workup),
+        truncation(workup, truncated)?,
+    ])
 }
 
 /// Largest |Φ| of the pairs in distance bins: the decay curve.
@@ -40,11 +44,21 @@ pub(crate) fn decay_curve(workup: &Workup<'_>, curves: &mut Curves) {
 fn pairs<'a>(workup: &'a Workup<'_>) -> impl Iterator<Item = (f64, f64)> + 'a {
     let n = workup.crystal.atom_count();
     let home = workup.projected.home_cell();
-    workup.projected.blocks().iter().enumerate().filter_map(move |(flat, block)| {
-        let (l, i, j) = (flat / (n * n), flat / n % n, flat % n);
-        let own = l == home && i == j;
-        (!own).then(|| (workup.images.distance(&workup.crystal, l, i, j), block.amax()))
-    })
+    workup
+        .projected
+        .blocks()
+        .iter()
+        .enumerate()
+        .filter_map(move |(flat, block)| {
+            let (l, i, j) = (flat / (n * n), flat / n % n, flat % n);
+            let own = l == home && i == j;
+            (!own).then(|| {
+                (
+                    workup.images.distance(&workup.crystal, l, i, j),
+                    block.amax(),
+                )
+            })
+        })
 }
 
 /// Pairs beyond this share of the largest distance in the supercell are its outer part.
@@ -53,8 +67,15 @@ const OUTER_SHARE: f64 = 0.8;
 fn reach(workup: &Workup<'_>) -> Finding {
     let all: Vec<(f64, f64)> = pairs(workup).collect();
     let farthest = all.iter().map(|p| p.0).fold(0.0, f64::max);
-    let largest = workup.projected.largest_self_constant().max(f64::MIN_POSITIVE);
-    let outer = all.iter().filter(|p| p.0 >= OUTER_SHARE * farthest).map(|p| p.1).fold(0.0, f64::max);
+    let largest = workup
+        .projected
+        .largest_self_constant()
+        .max(f64::MIN_POSITIVE);
+    let outer = all
+        .iter()
+        .filter(|p| p.0 >= OUTER_SHARE * farthest)
+        .map(|p| p.1)
+        .fold(0.0, f64::max);
     let limits = Limit::caution_only(workup.limits.reach.decay_caution);
     Finding::graded(Rule::Reach, outer / largest, "", limits)
         .at(format!("pairs beyond {:.1} Å", OUTER_SHARE * farthest))
@@ -72,7 +93,11 @@ fn reach(workup: &Workup<'_>) -> Finding {
 fn supercell_size(workup: &Workup<'_>) -> Finding {
     let half = 0.5 * workup.shortest_supercell_vector_ang();
     let contact = workup.molecules.nearest_centre_distance_ang();
-    let severity = if workup.is_narrow() { Severity::Caution } else { Severity::Pass };
+    let severity = if workup.is_narrow() {
+        Severity::Caution
+    } else {
+        Severity::Pass
+    };
     let words = if workup.is_narrow() {
         "the supercell is one molecule wide in some direction: an acoustic branch along it is never sampled"
     } else {
@@ -91,7 +116,10 @@ fn next_supercell(workup: &Workup<'_>) -> String {
         .min_by(|a, b| vectors.row(*a).norm().total_cmp(&vectors.row(*b).norm()))
         .unwrap_or_default();
     let mut matrix = *supercell.matrix();
-    let gcd = matrix[shortest].iter().fold(0_i64, |g, x| gcd(g, x.abs())).max(1);
+    let gcd = matrix[shortest]
+        .iter()
+        .fold(0_i64, |g, x| gcd(g, x.abs()))
+        .max(1);
     for x in &mut matrix[shortest] {
         *x = *x / gcd * (gcd + 1);
     }
@@ -104,10 +132,7 @@ fn gcd(a: i64, b: i64) -> i64 {
     if b == 0 { a } else { gcd(b, a % b) }
 }
 
-fn truncation(
-    workup: &Workup<'_>,
-    truncated: &[(f64, Dynamics)],
-) -> Result<Finding, ExamineError> {
+fn truncation(workup: &Workup<'_>, truncated: &[(f64, Dynamics)]) -> Result<Finding, ExamineError> {
     let failed = eigen_error("truncation");
     let judged = workup.limits.reach.truncation_judged_fraction;
     let mut points = workup.projected.supercell().commensurate_points();

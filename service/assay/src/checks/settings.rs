@@ -34,9 +34,15 @@ pub(crate) fn check(workup: &Workup<'_>) -> Vec<Finding> {
 /// Keys of `[settings]` that the policy requires of this kind and that are missing.
 pub(crate) fn missing_required(workup: &Workup<'_>) -> Vec<String> {
     let settings = &workup.submission.settings;
-    let Some(kind) = settings.kind else { return Vec::new() };
+    let Some(kind) = settings.kind else {
+        return Vec::new();
+    };
     let required = &workup.limits.settings.of(kind).required;
-    required.iter().filter(|key| !is_given(settings, key)).cloned().collect()
+    required
+        .iter()
+        .filter(|key| !is_given(settings, key))
+        .cloned()
+        .collect()
 }
 
 fn is_given(settings: &Settings, key: &str) -> bool {
@@ -78,9 +84,13 @@ fn kind_words(kind: MethodKind) -> &'static str {
 }
 
 fn missing(rule: Rule, key: &str, why: &str) -> Finding {
-    Finding::new(rule, Severity::Caution, format!("{key} is not declared: {why}"))
-        .at(key)
-        .because(LikelyCause::MissingSetting, format!("declare {key}"))
+    Finding::new(
+        rule,
+        Severity::Caution,
+        format!("{key} is not declared: {why}"),
+    )
+    .at(key)
+    .because(LikelyCause::MissingSetting, format!("declare {key}"))
 }
 
 /// A value that should not exceed the policy's limit.
@@ -94,7 +104,9 @@ fn at_most(
     remedy: &str,
 ) -> Option<Finding> {
     let limit = limit?;
-    let Some(value) = value else { return Some(missing(rule, key, why)) };
+    let Some(value) = value else {
+        return Some(missing(rule, key, why));
+    };
     let finding = Finding::graded(rule, value, unit, Limit::caution_only(limit))
         .at(key)
         .saying(format!("{key} = {value:e}"))
@@ -121,11 +133,19 @@ fn density_grid(settings: &Settings, policy: &KindLimits) -> Option<Finding> {
         let why = "a density grid that does not move with the atoms breaks the translation sum";
         return Some(missing(Rule::SettingDensityGrid, key, why));
     };
-    let severity = if value < least { Severity::Caution } else { Severity::Pass };
-    let finding = Finding::new(Rule::SettingDensityGrid, severity, format!("{key} = {value}"))
-        .measured(value, Some(least), "")
-        .at(key)
-        .because(LikelyCause::LooseSetting, "use a ratio of 4 to 5");
+    let severity = if value < least {
+        Severity::Caution
+    } else {
+        Severity::Pass
+    };
+    let finding = Finding::new(
+        Rule::SettingDensityGrid,
+        severity,
+        format!("{key} = {value}"),
+    )
+    .measured(value, Some(least), "")
+    .at(key)
+    .because(LikelyCause::LooseSetting, "use a ratio of 4 to 5");
     Some(finding)
 }
 
@@ -147,9 +167,11 @@ fn model_digest(settings: &Settings, policy: &KindLimits) -> Option<Finding> {
     }
     let key = "settings.model_digest";
     Some(match &settings.model_digest {
-        Some(digest) => {
-            Finding::new(Rule::SettingModelDigest, Severity::Pass, format!("{key} = {digest}"))
-        }
+        Some(digest) => Finding::new(
+            Rule::SettingModelDigest,
+            Severity::Pass,
+            format!("{key} = {digest}"),
+        ),
         None => missing(
             Rule::SettingModelDigest,
             key,
@@ -165,11 +187,18 @@ fn float_bits(settings: &Settings, policy: &KindLimits) -> Option<Finding> {
         let why = "single precision leaves seven digits, which is the cancellation itself";
         return Some(missing(Rule::SettingFloatBits, key, why));
     };
-    let severity = if bits < least { Severity::Caution } else { Severity::Pass };
+    let severity = if bits < least {
+        Severity::Caution
+    } else {
+        Severity::Pass
+    };
     let finding = Finding::new(Rule::SettingFloatBits, severity, format!("{key} = {bits}"))
         .measured(f64::from(bits), Some(f64::from(least)), "bit")
         .at(key)
-        .because(LikelyCause::LooseSetting, "compute forces in double precision");
+        .because(
+            LikelyCause::LooseSetting,
+            "compute forces in double precision",
+        );
     Some(finding)
 }
 
@@ -216,9 +245,12 @@ fn differences(settings: &Settings) -> Option<Finding> {
             key,
             "forward differences keep the third-order term, central ones cancel it",
         ),
-        Some(Differences::Central) => {
-            Finding::new(Rule::SettingDifferences, Severity::Pass, "central differences").at(key)
-        }
+        Some(Differences::Central) => Finding::new(
+            Rule::SettingDifferences,
+            Severity::Pass,
+            "central differences",
+        )
+        .at(key),
         Some(Differences::Forward) => Finding::new(
             Rule::SettingDifferences,
             Severity::Caution,
@@ -240,13 +272,24 @@ fn displacement(settings: &Settings, policy: &KindLimits) -> Option<Finding> {
         return Some(missing(Rule::SettingDisplacement, key, why));
     };
     let (limit, words) = if value < least {
-        (least, "small displacements divide the noise of the forces by a small number")
+        (
+            least,
+            "small displacements divide the noise of the forces by a small number",
+        )
     } else {
         (largest, "large displacements bring higher-order terms in")
     };
     let inside = (least..=largest).contains(&value);
-    let severity = if inside { Severity::Pass } else { Severity::Caution };
-    let message = if inside { format!("{key} = {value}") } else { format!("{key} = {value}: {words}") };
+    let severity = if inside {
+        Severity::Pass
+    } else {
+        Severity::Caution
+    };
+    let message = if inside {
+        format!("{key} = {value}")
+    } else {
+        format!("{key} = {value}: {words}")
+    };
     let finding = Finding::new(Rule::SettingDisplacement, severity, message)
         .measured(value, Some(limit), "Å")
         .at(key)
@@ -264,5 +307,9 @@ fn level(settings: &Settings) -> Finding {
             "energies compare only within one level of theory, and an undeclared level compares with nothing else",
         );
     }
-    Finding::new(Rule::SettingLevel, Severity::Pass, format!("level of the constants: {key}"))
+    Finding::new(
+        Rule::SettingLevel,
+        Severity::Pass,
+        format!("level of the constants: {key}"),
+    )
 }

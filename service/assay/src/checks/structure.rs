@@ -44,7 +44,11 @@ fn overlap(workup: &Workup<'_>) -> Finding {
     }
     let (ratio, i, j, distance) = worst;
     if ratio.is_infinite() {
-        return Finding::new(Rule::AtomOverlap, Severity::Pass, "one atom only: no pair to judge");
+        return Finding::new(
+            Rule::AtomOverlap,
+            Severity::Pass,
+            "one atom only: no pair to judge",
+        );
     }
     let severity = if ratio < limits.overlap_fail_fraction {
         Severity::Fail
@@ -56,15 +60,27 @@ fn overlap(workup: &Workup<'_>) -> Finding {
     Finding::new(
         Rule::AtomOverlap,
         severity,
-        format!("the closest pair is {distance:.3} Å apart, as a share of the sum of the covalent radii"),
+        format!(
+            "the closest pair is {distance:.3} Å apart, as a share of the sum of the covalent radii"
+        ),
     )
     .measured(ratio, Some(limits.overlap_caution_fraction), "")
-    .at(format!("atoms {i} ({}) and {j} ({})", elements[i], elements[j]))
-    .because(LikelyCause::WrongStructure, "check cell vectors, length unit and positions")
+    .at(format!(
+        "atoms {i} ({}) and {j} ({})",
+        elements[i], elements[j]
+    ))
+    .because(
+        LikelyCause::WrongStructure,
+        "check cell vectors, length unit and positions",
+    )
 }
 
 fn counts(formula: &Formula) -> BTreeMap<Element, usize> {
-    formula.0.iter().map(|(element, count)| (*element, *count as usize)).collect()
+    formula
+        .0
+        .iter()
+        .map(|(element, count)| (*element, *count as usize))
+        .collect()
 }
 
 /// Distinct molecular formulas found, with how many of each.
@@ -81,7 +97,11 @@ fn show_kinds(workup: &Workup<'_>) -> String {
     for molecule in workup.molecules.molecules() {
         *names.entry(molecule.hill_formula()).or_insert(0) += 1;
     }
-    names.iter().map(|(name, count)| format!("{count} × {name}")).collect::<Vec<_>>().join(", ")
+    names
+        .iter()
+        .map(|(name, count)| format!("{count} × {name}"))
+        .collect::<Vec<_>>()
+        .join(", ")
 }
 
 fn molecules(workup: &Workup<'_>) -> Finding {
@@ -99,9 +119,15 @@ fn molecules(workup: &Workup<'_>) -> Finding {
     }
     let units = workup.submission.identity.formula_units as usize;
     let uneven = found_kinds(workup).values().any(|count| count % units != 0);
-    let severity = if uneven { Severity::Fail } else { Severity::Pass };
+    let severity = if uneven {
+        Severity::Fail
+    } else {
+        Severity::Pass
+    };
     let message = if uneven {
-        format!("molecules do not come in whole numbers per formula unit: {shown} in {units} formula units")
+        format!(
+            "molecules do not come in whole numbers per formula unit: {shown} in {units} formula units"
+        )
     } else {
         format!("molecules found from bonds, whole across cell faces: {shown}")
     };
@@ -118,13 +144,30 @@ fn formula(workup: &Workup<'_>) -> Finding {
         *cell.entry(*element).or_insert(0) += 1;
     }
     let units = identity.formula_units as usize;
-    let wanted: BTreeMap<Element, usize> =
-        counts(&identity.formula).into_iter().map(|(e, c)| (e, c * units)).collect();
-    let severity = if cell == wanted { Severity::Pass } else { Severity::Fail };
-    let words = if cell == wanted { "the cell holds" } else { "the cell does not hold" };
-    Finding::new(Rule::Formula, severity, format!("{words} {units} × {}", identity.formula))
-        .at("identity.formula")
-        .because(LikelyCause::WrongStructure, "check identity.formula and identity.formula_units")
+    let wanted: BTreeMap<Element, usize> = counts(&identity.formula)
+        .into_iter()
+        .map(|(e, c)| (e, c * units))
+        .collect();
+    let severity = if cell == wanted {
+        Severity::Pass
+    } else {
+        Severity::Fail
+    };
+    let words = if cell == wanted {
+        "the cell holds"
+    } else {
+        "the cell does not hold"
+    };
+    Finding::new(
+        Rule::Formula,
+        severity,
+        format!("{words} {units} × {}", identity.formula),
+    )
+    .at("identity.formula")
+    .because(
+        LikelyCause::WrongStructure,
+        "check identity.formula and identity.formula_units",
+    )
 }
 
 fn components(workup: &Workup<'_>) -> Finding {
@@ -151,14 +194,25 @@ fn components(workup: &Workup<'_>) -> Finding {
         .iter()
         .map(|c| format!("{} × {}", c.count as usize * units, c.formula))
         .collect();
-    let words = if same { "as declared" } else { "not as declared" };
+    let words = if same {
+        "as declared"
+    } else {
+        "not as declared"
+    };
     Finding::new(
         Rule::Components,
         severity,
-        format!("molecules are {words}: found {}, declared {}", show_kinds(workup), declared.join(", ")),
+        format!(
+            "molecules are {words}: found {}, declared {}",
+            show_kinds(workup),
+            declared.join(", ")
+        ),
     )
     .at("component")
-    .because(LikelyCause::WrongStructure, "check the components, or the positions of the atoms")
+    .because(
+        LikelyCause::WrongStructure,
+        "check the components, or the positions of the atoms",
+    )
 }
 
 fn density(workup: &Workup<'_>) -> Finding {
@@ -174,9 +228,16 @@ fn density(workup: &Workup<'_>) -> Finding {
     };
     let [least, largest] = limits.density_caution_g_per_cm3;
     let limit = if density < least { least } else { largest };
-    Finding::new(Rule::Density, severity, format!("density {density:.3} g/cm³"))
-        .measured(density, Some(limit), "g/cm³")
-        .because(LikelyCause::WrongStructure, "check crystal.length_unit and the cell vectors")
+    Finding::new(
+        Rule::Density,
+        severity,
+        format!("density {density:.3} g/cm³"),
+    )
+    .measured(density, Some(limit), "g/cm³")
+    .because(
+        LikelyCause::WrongStructure,
+        "check crystal.length_unit and the cell vectors",
+    )
 }
 
 fn masses(workup: &Workup<'_>) -> Finding {
@@ -186,8 +247,12 @@ fn masses(workup: &Workup<'_>) -> Finding {
     }
     let limits = &workup.limits.structure;
     let (mut worst, mut atom) = (0.0, 0);
-    for (i, (element, mass)) in
-        workup.crystal.elements().iter().zip(workup.crystal.masses_u()).enumerate()
+    for (i, (element, mass)) in workup
+        .crystal
+        .elements()
+        .iter()
+        .zip(workup.crystal.masses_u())
+        .enumerate()
     {
         let standard = element.standard_weight_u().unwrap_or(*mass);
         let deviation = nearest_mass_deviation(*element, *mass, standard);
@@ -197,7 +262,10 @@ fn masses(workup: &Workup<'_>) -> Finding {
     }
     let element = workup.crystal.elements()[atom];
     let mass = workup.crystal.masses_u()[atom];
-    let limit = Limit { caution: limits.mass_caution_relative, fail: limits.mass_fail_relative };
+    let limit = Limit {
+        caution: limits.mass_caution_relative,
+        fail: limits.mass_fail_relative,
+    };
     Finding::graded(Rule::Masses, worst, "", limit)
         .at(format!("atom {atom} ({element}), {mass} u"))
         .saying("largest deviation of a declared mass from the standard weight (of hydrogen, from its nearest isotope)")
@@ -227,7 +295,10 @@ fn space_group(workup: &Workup<'_>) -> Finding {
             Severity::Caution,
             format!("{error}; the crystal is examined without symmetry"),
         )
-        .because(LikelyCause::WrongStructure, "check the cell and the positions"),
+        .because(
+            LikelyCause::WrongStructure,
+            "check the cell and the positions",
+        ),
         None => Finding::new(
             Rule::SpaceGroup,
             Severity::Pass,

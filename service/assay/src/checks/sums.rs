@@ -29,7 +29,12 @@ pub(crate) fn check(workup: &Workup<'_>) -> Vec<Finding> {
 }
 
 /// A block as people read it.
-pub(crate) fn show_block(workup: &Workup<'_>, cell: usize, displaced: usize, response: usize) -> String {
+pub(crate) fn show_block(
+    workup: &Workup<'_>,
+    cell: usize,
+    displaced: usize,
+    response: usize,
+) -> String {
     let elements = workup.crystal.elements();
     let [x, y, z] = workup.projected.supercell().translations()[cell];
     format!(
@@ -44,7 +49,10 @@ fn pair_symmetry(workup: &Workup<'_>) -> Finding {
     let sums = &workup.limits.sums;
     // The symmetric mean lies halfway: the asymmetry between the two is twice the distance to it.
     let asymmetry = 2.0 * worst;
-    let limits = Limit { caution: sums.pair_symmetry_caution, fail: sums.pair_symmetry_fail };
+    let limits = Limit {
+        caution: sums.pair_symmetry_caution,
+        fail: sums.pair_symmetry_fail,
+    };
     relative_finding(workup, Rule::PairSymmetry, asymmetry, limits)
         .at(place(workup, flat))
         .saying(format!(
@@ -76,9 +84,15 @@ fn translation_sum(workup: &Workup<'_>, side: Side) -> Finding {
         .iter()
         .map(Matrix3::amax)
         .enumerate()
-        .fold((0, 0.0), |best, next| if next.1 > best.1 { next } else { best });
+        .fold(
+            (0, 0.0),
+            |best, next| if next.1 > best.1 { next } else { best },
+        );
     let limits = &workup.limits.sums;
-    let limits = Limit { caution: limits.translation_caution, fail: limits.translation_fail };
+    let limits = Limit {
+        caution: limits.translation_caution,
+        fail: limits.translation_fail,
+    };
     let (rule, over, on) = match side {
         Side::Displaced => (Rule::TranslationSumDisplaced, "displaced", "force on"),
         Side::Response => (Rule::TranslationSumResponse, "response", "displacing"),
@@ -105,7 +119,9 @@ fn rotation_sum(workup: &Workup<'_>) -> Finding {
         scale[i] += block.amax() * workup.images.distance(&workup.crystal, l, i, j);
     }
     let relative = |k: usize| sums[k].amax() / f64::max(scale[k / 3], f64::MIN_POSITIVE);
-    let worst = (0..sums.len()).max_by(|a, b| relative(*a).total_cmp(&relative(*b))).unwrap_or(0);
+    let worst = (0..sums.len())
+        .max_by(|a, b| relative(*a).total_cmp(&relative(*b)))
+        .unwrap_or(0);
     let limits = Limit::caution_only(workup.limits.sums.rotation_caution);
     Finding::graded(Rule::RotationSum, relative(worst), "", limits)
         .at(format!("displacing atom {} ({})", worst / 3, workup.crystal.elements()[worst / 3]))
@@ -122,7 +138,10 @@ fn space_group(workup: &Workup<'_>) -> Finding {
     let (worst, flat) = largest_difference(raw, &space_group_symmetric(raw, &workup.group));
     let kept = workup.group.keeping(raw.supercell()).operations.len();
     let sums = &workup.limits.sums;
-    let limits = Limit { caution: sums.space_group_caution, fail: sums.space_group_fail };
+    let limits = Limit {
+        caution: sums.space_group_caution,
+        fail: sums.space_group_fail,
+    };
     relative_finding(workup, Rule::SpaceGroupResidual, worst, limits)
         .at(place(workup, flat))
         .saying(format!(
@@ -138,7 +157,11 @@ fn space_group(workup: &Workup<'_>) -> Finding {
 /// An absolute residual held against the largest self constant.
 fn relative_finding(workup: &Workup<'_>, rule: Rule, absolute: f64, limits: Limit) -> Finding {
     let scale = workup.submission.constants.largest_self_constant();
-    let relative = if scale > 0.0 { absolute / scale } else { f64::INFINITY };
+    let relative = if scale > 0.0 {
+        absolute / scale
+    } else {
+        f64::INFINITY
+    };
     Finding::graded(rule, relative, "", limits)
 }
 
@@ -148,7 +171,10 @@ fn largest_difference(a: &ForceConstants, b: &ForceConstants) -> (f64, usize) {
         .zip(b.blocks())
         .map(|(x, y)| (x - y).amax())
         .enumerate()
-        .fold((0.0, 0), |best, (flat, d)| if d > best.0 { (d, flat) } else { best })
+        .fold(
+            (0.0, 0),
+            |best, (flat, d)| if d > best.0 { (d, flat) } else { best },
+        )
 }
 
 fn place(workup: &Workup<'_>, flat: usize) -> String {
@@ -198,7 +224,11 @@ fn enforced(workup: &Workup<'_>) -> Vec<Finding> {
         .iter()
         .map(|family| {
             let expected = *family == SPACE_GROUP && noise.symmetry_expanded;
-            let severity = if expected { Severity::Pass } else { Severity::Caution };
+            let severity = if expected {
+                Severity::Pass
+            } else {
+                Severity::Caution
+            };
             Finding::new(
                 Rule::Enforced,
                 severity,

@@ -152,7 +152,7 @@ where
     let values = diagonal
         .column_vector()
         .iter()
-        .map(|z| z.real64())
+        .map(Real64Part::real64)
         .collect();
     let vectors = vectors.map_or_else(Vec::new, |columns| {
         (0..order)

@@ -1,4 +1,5 @@
-//! The tetrahedron method against closed forms: normalisation, the fcc nearest-neighbour crystal, linear bands.
+//! The tetrahedron method against closed forms: normalisation, the fcc nearest-neighbour crystal,
+//! linear bands.
 
 use std::f64::consts::PI;
 
@@ -9,9 +10,9 @@ fn fcc_reciprocal() -> Matrix3<f64> {
     Matrix3::new(-1.0, 1.0, 1.0, 1.0, -1.0, 1.0, 1.0, 1.0, -1.0) * PI
 }
 
-/// Frequencies of fcc with nearest-neighbour central springs, K = M = 1, a = 2, at the Cartesian wave vector q:
-/// D_xx = 2[2 − c_x(c_y + c_z)], D_xy = 2 s_x s_y (Kittel, Introduction to Solid State Physics, ch. 4; Ashcroft & Mermin,
-/// ch. 22, fcc with one spring).
+/// Frequencies of fcc with nearest-neighbour central springs, K = M = 1, a = 2, at the Cartesian
+/// wave vector q: D_xx = 2[2 − c_x(c_y + c_z)], D_xy = 2 s_x s_y (Kittel, Introduction to Solid
+/// State Physics, ch. 4; Ashcroft & Mermin, ch. 22, fcc with one spring).
 fn fcc_frequencies(q: &Vector3<f64>) -> [f64; 3] {
     let (c, s) = (q.map(f64::cos), q.map(f64::sin));
     let matrix = Matrix3::from_fn(|a, b| {
@@ -58,7 +59,7 @@ fn even_edges(last: f64, bins: u32) -> Vec<f64> {
 
 #[test]
 fn closed_form_has_the_zone_boundary_values_of_the_literature() {
-    // Squares at X, L and W from the C3 rows of the reference collection.
+    // Squares at X, L and W as in `tests/reference/lattice_exact.toml`.
     let at = |x: f64, y: f64, z: f64| fcc_frequencies(&Vector3::new(x, y, z)).map(|w| w * w);
     let expected = [
         (at(PI, 0.0, 0.0), [4.0, 4.0, 8.0]),
@@ -128,8 +129,8 @@ fn mean_inverse_cube_of_velocity() -> f64 {
 
 #[test]
 fn low_frequencies_follow_the_square_law_of_sound() {
-    // N(ω) = V ω³/(6π²) Σ⟨c⁻³⟩ with the cell volume V = a³/4 = 2 (Debye 1912, anisotropic). Dispersion raises the bins
-    // by up to 3 %, the linear interpolation at Γ lowers them by less.
+    // N(ω) = V ω³/(6π²) Σ⟨c⁻³⟩ with the cell volume V = a³/4 = 2 (Debye 1912, anisotropic).
+    // Dispersion raises the bins by up to 3 %, the linear interpolation at Γ lowers the first.
     let divisions = [72; 3];
     let density = count(divisions, &fcc_mesh(divisions), &[0.0, 0.2, 0.3, 0.4]);
     let coefficient = 2.0 / (6.0 * PI * PI) * mean_inverse_cube_of_velocity();
@@ -145,8 +146,8 @@ fn low_frequencies_follow_the_square_law_of_sound() {
 
 #[test]
 fn kinks_lie_at_the_values_of_van_hove() {
-    // Critical points of fcc with one spring (C3 rows of the reference collection): transverse √2 at L, transverse 2 at
-    // X, √6 at W, and the end of the spectrum √8 at X and L (van Hove 1953).
+    // Critical points of fcc with one spring (`tests/reference/lattice_exact.toml`): transverse √2
+    // at L, transverse 2 at X, √6 at W, and the end of the spectrum √8 at X and L (van Hove 1953).
     let divisions = [64; 3];
     let edges = even_edges(3.0, 150);
     let density = count(divisions, &fcc_mesh(divisions), &edges);
@@ -190,7 +191,7 @@ fn kinks_lie_at_the_values_of_van_hove() {
 
 #[test]
 fn mean_frequency_converges_to_the_literature() {
-    // ⟨ω⟩ = 1.9283493207049 per mode (C3 rows of the reference collection).
+    // ⟨ω⟩ = 1.9283493207049 per mode (`tests/reference/lattice_exact.toml`).
     let divisions = [24; 3];
     let edges = even_edges(2.9, 2900);
     let density = count(divisions, &fcc_mesh(divisions), &edges);
@@ -205,7 +206,8 @@ fn mean_frequency_converges_to_the_literature() {
 
 #[test]
 fn linear_band_and_flat_band_are_exact() {
-    // Two branches: one flat at 5, one linear along the first axis but for its last step back to zero.
+    // Two branches: one flat at 5, one linear along the first axis but for its last step back to
+    // zero.
     let divisions = [4, 2, 3];
     let values: Vec<f64> = (0..4)
         .flat_map(|i| std::iter::repeat_n([f64::from(i), 5.0], 6))
@@ -219,7 +221,8 @@ fn linear_band_and_flat_band_are_exact() {
     };
     let edges = [0.0, 0.5, 1.0, 2.0, 3.0, 5.0, 6.0];
     let density = DensityOfStates::of_mesh(&mesh, &Matrix3::identity(), &edges).unwrap();
-    // Each of the three rising steps spreads a quarter of the modes over one unit, the falling one over three.
+    // Each of the three rising steps spreads a quarter of the modes over one unit, the falling one
+    // over three.
     let expected = [
         0.125 + 0.125 / 3.0,
         0.125 + 0.125 / 3.0,

@@ -10,7 +10,8 @@ const REDUCTION_ROUNDS_MAX: usize = 1000;
 /// A reduction step must shorten by more than rounding.
 const REDUCTION_GAIN: f64 = 1.0 - 1e-12;
 
-/// A bond from one atom of the home cell to the image of another at a lattice translation of the written positions.
+/// A bond from one atom of the home cell to the image of another at a lattice translation of the
+/// written positions.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(super) struct Bond {
     /// The other atom.
@@ -19,7 +20,8 @@ pub(super) struct Bond {
     pub(super) translation: Translation,
 }
 
-/// A lattice with a basis of short vectors beside its own, so that few images need a look however skewed the cell is.
+/// A lattice with a basis of short vectors beside its own, so that few images need a look however
+/// skewed the cell is.
 #[derive(Debug)]
 pub(super) struct ReducedLattice {
     /// Short vectors as rows, Å: P times the cell.
@@ -52,8 +54,8 @@ impl ReducedLattice {
         }
     }
 
-    /// All lattice translations R with |separation + R| ≤ `limit_ang`, with that distance in Å. `separation` and R are
-    /// in the basis of the cell.
+    /// All lattice translations R with |separation + R| ≤ `limit_ang`, with that distance in Å.
+    /// `separation` and R are in the basis of the cell.
     pub(super) fn images_within(
         &self,
         separation: &Vector3<f64>,

@@ -1,4 +1,5 @@
-//! Molecules cut by cell faces, interleaved, linear, endless; and the rigid share of modes built to be rigid or not.
+//! Molecules cut by cell faces, interleaved, linear, endless; and the rigid share of modes built to
+//! be rigid or not.
 
 use std::f64::consts::PI;
 
@@ -89,29 +90,39 @@ fn formulas_are_in_the_order_of_hill() {
     let molecules = Molecules::find(&wrapped(cell, &methanol), TOLERANCE_ANG);
     assert_eq!(molecules.molecules().len(), 1);
     assert_eq!(molecules.molecules()[0].hill_formula(), "C H4 O");
+    // Without carbon hydrogen has no special place.
+    let bromide = [("H", [0.0; 3]), ("Br", [1.41, 0.0, 0.0])];
+    let acid = Molecules::find(&wrapped(cell, &bromide), TOLERANCE_ANG);
+    assert_eq!(acid.molecules()[0].hill_formula(), "Br H");
     let hydrogen = Element::from_symbol("H").unwrap();
     assert_eq!(molecules.molecules()[0].formula().get(&hydrogen), Some(&4));
 }
 
 #[test]
 fn bonds_end_at_the_sum_of_radii_and_tolerance() {
-    // Carbon 0.76 Å twice (Cordero et al. 2008).
-    let count = |length: f64, tolerance: f64| {
+    // Radii of Cordero et al. (2008): C 0.76 Å, H 0.31 Å, Br 1.20 Å.
+    let count = |symbols: [&'static str; 2], length: f64, tolerance: f64| {
         let cell = Matrix3::identity() * 9.0;
-        let pair = [("C", [8.9, 0.0, 0.0]), ("C", [8.9 + length, 0.0, 0.0])];
+        let pair = [
+            (symbols[0], [8.9, 0.0, 0.0]),
+            (symbols[1], [8.9 + length, 0.0, 0.0]),
+        ];
         Molecules::find(&wrapped(cell, &pair), tolerance)
             .molecules()
             .len()
     };
-    assert_eq!(count(1.5, 0.0), 1);
-    assert_eq!(count(1.54, 0.0), 2);
-    assert_eq!(count(1.86, 0.35), 1);
-    assert_eq!(count(1.88, 0.35), 2);
+    for (symbols, sum) in [(["C", "C"], 1.52), (["C", "H"], 1.07), (["H", "Br"], 1.51)] {
+        for tolerance in [0.0, 0.35] {
+            assert_eq!(count(symbols, sum + tolerance - 0.01, tolerance), 1);
+            assert_eq!(count(symbols, sum + tolerance + 0.01, tolerance), 2);
+        }
+    }
 }
 
 #[test]
 fn interleaved_molecules_stay_apart() {
-    // Two carbon rods side by side, each across the face of a cell shorter than either is wide when wrapped.
+    // Two carbon rods side by side, each across the face of a cell shorter than either is wide when
+    // wrapped.
     let rod = |x: f64, y: f64| (0..4).map(move |k| ("C", [x, y, 1.4 * f64::from(k)]));
     let cell = Matrix3::from_diagonal(&Vector3::new(7.0, 7.0, 8.0));
     let mut atoms: Vec<(&str, [f64; 3])> = Vec::new();
@@ -128,7 +139,8 @@ fn interleaved_molecules_stay_apart() {
         .map(|molecule| molecule.members()[3].shift[2])
         .collect();
     assert_eq!(ends, [0, 1]);
-    // The rods stand 2.5 Å apart across a face, their centres shifted by 5 − 8 = −3 Å along themselves.
+    // The rods stand 2.5 Å apart across a face, their centres shifted by 5 − 8 = −3 Å along
+    // themselves.
     let expected = (2.5_f64.powi(2) + 0.3_f64.powi(2) + 3.0_f64.powi(2)).sqrt();
     assert!((molecules.nearest_centre_distance_ang() - expected).abs() < 1e-12);
 }
@@ -164,7 +176,8 @@ fn networks_know_their_dimension() {
     assert_eq!(extent(diagonal, &[("C", [0.0; 3])]), Extent::Periodic(1));
 }
 
-/// The mode e_i = √m_i (push + turn × arm_i) exp(−2πi q·(x_i + R_i)) of one molecule, zero on the others.
+/// The mode e_i = √m_i (push + turn × arm_i) exp(−2πi q·(x_i + R_i)) of one molecule, zero on the
+/// others.
 fn rigid_mode(
     crystal: &Crystal,
     molecule: &Molecule,

@@ -1,4 +1,5 @@
-//! The oscillator against its own limits and identities, and the curve against the functions that it samples.
+//! The oscillator against its own limits and identities, and the curve against the functions that
+//! it samples.
 
 use super::*;
 use crate::units::{EV_TO_KJ_PER_MOL, EV_TO_PER_CM};

@@ -20,25 +20,42 @@ pub(super) struct Arrangement<'a> {
 
 impl<'a> Arrangement<'a> {
     pub(super) fn as_given(constants: &'a ForceConstants) -> Self {
-        Self { constants, axes: [0, 1, 2], sign: 1.0, mirrored: false }
+        Self {
+            constants,
+            axes: [0, 1, 2],
+            sign: 1.0,
+            mirrored: false,
+        }
     }
 
     pub(super) fn negated(&self) -> Self {
-        Self { sign: -self.sign, ..self.clone() }
+        Self {
+            sign: -self.sign,
+            ..self.clone()
+        }
     }
 
     /// Translations with the opposite sign: the same thing as a swapped index order.
     pub(super) fn mirrored(&self) -> Self {
-        Self { mirrored: !self.mirrored, ..self.clone() }
+        Self {
+            mirrored: !self.mirrored,
+            ..self.clone()
+        }
     }
 
     pub(super) fn axis_permutations(&self) -> [Self; 5] {
-        [[1, 2, 0], [2, 0, 1], [1, 0, 2], [0, 2, 1], [2, 1, 0]]
-            .map(|axes| Self { axes, ..self.clone() })
+        [[1, 2, 0], [2, 0, 1], [1, 0, 2], [0, 2, 1], [2, 1, 0]].map(|axes| Self {
+            axes,
+            ..self.clone()
+        })
     }
 
     fn block(&self, cell: usize, displaced: usize, response: usize) -> Matrix3<f64> {
-        let cell = if self.mirrored { self.constants.supercell().negative(cell) } else { cell };
+        let cell = if self.mirrored {
+            self.constants.supercell().negative(cell)
+        } else {
+            cell
+        };
         let block = self.constants.block(cell, displaced, response);
         Matrix3::from_fn(|r, c| self.sign * block[(self.axes[r], self.axes[c])])
     }
@@ -94,10 +111,19 @@ impl Bonds {
                     }
                     let radii = [from, to].map(|k| elements[k].covalent_radius_angstrom());
                     let mut vectors = workup.images.separations(&workup.crystal, cell, from, to);
-                    let (Some(x), true) = (vectors.next(), vectors.len() == 0) else { continue };
+                    let (Some(x), true) = (vectors.next(), vectors.len() == 0) else {
+                        continue;
+                    };
                     if x.norm() < radii[0] + radii[1] + tolerance {
-                        let to_hydrogen = [from, to].iter().any(|k| elements[*k].atomic_number() == 1);
-                        bonds.push(Bond { cell, from, to, direction: x.normalize(), to_hydrogen });
+                        let to_hydrogen =
+                            [from, to].iter().any(|k| elements[*k].atomic_number() == 1);
+                        bonds.push(Bond {
+                            cell,
+                            from,
+                            to,
+                            direction: x.normalize(),
+                            to_hydrogen,
+                        });
                     }
                 }
             }
@@ -138,7 +164,13 @@ impl Bonds {
 
     /// Median longitudinal constant, eV/Å².
     pub(super) fn median_constant(&self, reading: &Arrangement<'_>) -> f64 {
-        median(self.0.iter().map(|bond| longitudinal(bond, reading)).collect()).unwrap_or_default()
+        median(
+            self.0
+                .iter()
+                .map(|bond| longitudinal(bond, reading))
+                .collect(),
+        )
+        .unwrap_or_default()
     }
 
     /// Median longitudinal constant of bonds to hydrogen, eV/Å².
@@ -170,7 +202,10 @@ impl Bonds {
             }
             best.1
         };
-        let near = bonded.iter().filter(|i| strongest_distance(**i) < distance_ang).count();
+        let near = bonded
+            .iter()
+            .filter(|i| strongest_distance(**i) < distance_ang)
+            .count();
         (!bonded.is_empty()).then(|| near as f64 / bonded.len() as f64)
     }
 }
@@ -182,14 +217,20 @@ fn median(mut values: Vec<f64>) -> Option<f64> {
 
 /// −d̂ᵀ Φ d̂.
 fn longitudinal(bond: &Bond, reading: &Arrangement<'_>) -> f64 {
-    -bond.direction.dot(&(reading.block(bond.cell, bond.from, bond.to) * bond.direction))
+    -bond
+        .direction
+        .dot(&(reading.block(bond.cell, bond.from, bond.to) * bond.direction))
 }
 
 fn is_along(bond: &Bond, reading: &Arrangement<'_>, limits: &BlunderLimits) -> bool {
     let block = -reading.block(bond.cell, bond.from, bond.to);
     let eigen = SymmetricEigen::new((block + block.transpose()) * 0.5);
     let stiffest = eigen.eigenvalues.iamax();
-    let cosine = eigen.eigenvectors.column(stiffest).dot(&bond.direction).abs();
+    let cosine = eigen
+        .eigenvectors
+        .column(stiffest)
+        .dot(&bond.direction)
+        .abs();
     cosine > limits.bond_direction_cosine
 }
 
@@ -210,7 +251,11 @@ fn reread(supercell: &Supercell, axes: [usize; 3]) -> Option<Supercell> {
     if matrix == *supercell.matrix() {
         return None;
     }
-    let translations = supercell.translations().iter().map(|t| axes.map(|c| t[c])).collect();
+    let translations = supercell
+        .translations()
+        .iter()
+        .map(|t| axes.map(|c| t[c]))
+        .collect();
     Supercell::new(matrix, translations).ok()
 }
 
@@ -227,7 +272,11 @@ fn mean_distance_in(workup: &Workup<'_>, supercell: &Supercell) -> f64 {
             weight += block.norm();
         }
     }
-    if weight > 0.0 { sum / weight } else { f64::INFINITY }
+    if weight > 0.0 {
+        sum / weight
+    } else {
+        f64::INFINITY
+    }
 }
 
 /// A block that is zero where its partner under exchange, or a bond, says that it should not be.
@@ -247,7 +296,10 @@ pub(super) fn zeroed(workup: &Workup<'_>, bonds: &Bonds) -> Option<String> {
             }
         }
     }
-    let missing = bonds.0.iter().find(|bond| is_zero(bond.cell, bond.from, bond.to));
+    let missing = bonds
+        .0
+        .iter()
+        .find(|bond| is_zero(bond.cell, bond.from, bond.to));
     missing.map(|bond| show_block(workup, bond.cell, bond.from, bond.to))
 }
 
@@ -272,8 +324,16 @@ pub(super) fn duplicated(workup: &Workup<'_>) -> Option<String> {
         }
     }
     let copies = raw.blocks().iter().enumerate().filter(|(flat, block)| {
-        asymmetric(*flat) && seen.get(&bits(block)).is_some_and(|places| places.len() > 1)
+        asymmetric(*flat)
+            && seen
+                .get(&bits(block))
+                .is_some_and(|places| places.len() > 1)
     });
     let place = copies.map(|(flat, _)| flat).next()?;
-    Some(show_block(workup, place / (n * n), place / n % n, place % n))
+    Some(show_block(
+        workup,
+        place / (n * n),
+        place / n % n,
+        place % n,
+    ))
 }

@@ -1,0 +1,13 @@
+//! What people see: pure functions from messages to text. Nothing here reads, sends or decides.
+
+pub mod failure;
+pub mod lists;
+pub mod numbers;
+pub mod rank;
+pub mod report;
+pub mod soft_modes;
+pub mod table;
+pub mod text;
+pub mod words;
+
+pub use text::View;

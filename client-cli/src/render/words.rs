@@ -1,0 +1,163 @@
+//! The words that stand for the contract's names.
+
+use tarehouse_proto::v1::{
+    CellProtocol, LikelyCause, Severity, SoftModeTag, State, Strength, Verdict,
+};
+
+use super::text::{Style, View};
+
+/// A verdict in one word.
+pub fn verdict(verdict: Verdict) -> &'static str {
+    match verdict {
+        Verdict::Accept => "accepted",
+        Verdict::Hold => "held",
+        Verdict::Reject => "rejected",
+        Verdict::Unspecified => "no verdict",
+    }
+}
+
+/// What a verdict means, as a sentence.
+pub fn verdict_sentence(verdict: Verdict) -> &'static str {
+    match verdict {
+        Verdict::Accept => "Balanced: it can be stored and ranked.",
+        Verdict::Hold => "It needs the eye of a curator before it can be ranked.",
+        Verdict::Reject => "It cannot be stored as it is.",
+        Verdict::Unspecified => "It has not been examined.",
+    }
+}
+
+/// Style of a verdict.
+pub fn verdict_style(verdict: Verdict) -> Style {
+    match verdict {
+        Verdict::Accept => Style::Good,
+        Verdict::Hold => Style::Care,
+        Verdict::Reject => Style::Bad,
+        Verdict::Unspecified => Style::Quiet,
+    }
+}
+
+/// A state in one word.
+pub fn state(state: State) -> &'static str {
+    match state {
+        State::Draft => "draft",
+        State::Queued => "queued",
+        State::Accepted => "accepted",
+        State::Held => "held",
+        State::Rejected => "rejected",
+        State::Returned => "returned",
+        State::Retired => "retired",
+        State::Withdrawn => "withdrawn",
+        State::Unspecified => "unknown",
+    }
+}
+
+/// A state in its style.
+pub fn painted_state(view: View, of: State) -> String {
+    let style = match of {
+        State::Accepted => Style::Good,
+        State::Held | State::Returned => Style::Care,
+        State::Rejected => Style::Bad,
+        State::Draft | State::Queued | State::Retired | State::Withdrawn | State::Unspecified => {
+            Style::Quiet
+        }
+    };
+    view.paint(style, state(of))
+}
+
+/// Whether nothing more happens to a submission in this state unless somebody acts.
+pub fn is_final(state: State) -> bool {
+    match state {
+        State::Accepted
+        | State::Held
+        | State::Rejected
+        | State::Returned
+        | State::Retired
+        | State::Withdrawn => true,
+        State::Draft | State::Queued | State::Unspecified => false,
+    }
+}
+
+/// A severity in one word.
+pub fn severity(severity: Severity) -> &'static str {
+    match severity {
+        Severity::Pass => "pass",
+        Severity::Caution => "caution",
+        Severity::Fail => "fail",
+        Severity::Unspecified => "unknown",
+    }
+}
+
+/// A severity in its style, six columns wide or more.
+pub fn severity_style(severity: Severity) -> Style {
+    match severity {
+        Severity::Pass => Style::Good,
+        Severity::Caution => Style::Care,
+        Severity::Fail => Style::Bad,
+        Severity::Unspecified => Style::Quiet,
+    }
+}
+
+/// A likely cause in words; nothing where there is none to name.
+pub fn likely_cause(cause: LikelyCause) -> Option<&'static str> {
+    Some(match cause {
+        LikelyCause::Unspecified | LikelyCause::None => return None,
+        LikelyCause::WrongUnit => "the constants are in another unit than declared",
+        LikelyCause::SwappedIndexOrder => {
+            "the order of the two atom indices, or the sign of the translations, is swapped"
+        }
+        LikelyCause::PermutedAxes => "the Cartesian axes of structure and constants differ",
+        LikelyCause::PermutedAtoms => {
+            "the order of the atoms differs between structure and constants"
+        }
+        LikelyCause::WrongMasses => "the masses do not belong to the elements",
+        LikelyCause::SignError => "the constants have the wrong sign",
+        LikelyCause::ZeroedBlock => "a block of the constants was set to zero",
+        LikelyCause::DuplicatedBlock => "a block of the constants stands twice",
+        LikelyCause::WrongSupercell => {
+            "the supercell or its translations are not those of the constants"
+        }
+        LikelyCause::WrongStructure => "the structure is not that of the constants",
+        LikelyCause::ScfNoise => "noise of a loosely converged electronic structure",
+        LikelyCause::RoundedForces => "forces were written with too few decimals",
+        LikelyCause::DifferenceTruncation => {
+            "the displacements are too long for the difference quotient"
+        }
+        LikelyCause::SmallSupercell => "the supercell is too small",
+        LikelyCause::UnrelaxedGeometry => "the geometry was not fully relaxed",
+        LikelyCause::EvidenceErased => "conditions were enforced before submission",
+        LikelyCause::MissingSetting => "a setting was not declared",
+        LikelyCause::LooseSetting => "a setting is looser than the policy asks",
+        LikelyCause::Instability => "the harmonic crystal is truly unstable",
+        LikelyCause::DifferentTreatment => "the contributor treated the constants in another way",
+        LikelyCause::Unknown => "not known",
+    })
+}
+
+/// A tag in words.
+pub fn tag(tag: SoftModeTag) -> &'static str {
+    match tag {
+        SoftModeTag::Numerical => "numerical",
+        SoftModeTag::PossiblyPhysical => "possibly physical",
+        SoftModeTag::Unspecified => "untagged",
+    }
+}
+
+/// The strength of a tag, and what that means.
+pub fn strength(strength: Strength) -> &'static str {
+    match strength {
+        Strength::Strong => "strong (direct evidence)",
+        Strength::Weak => "weak (indirect evidence)",
+        Strength::Unspecified => "of unknown strength",
+    }
+}
+
+/// How a cell was chosen.
+pub fn cell_protocol(protocol: CellProtocol) -> &'static str {
+    match protocol {
+        CellProtocol::Relaxed => "relaxed cells",
+        CellProtocol::Experimental => "measured cells",
+        CellProtocol::Expanded => "expanded cells",
+        CellProtocol::Other => "cells of another kind",
+        CellProtocol::Unspecified => "cells of unknown kind",
+    }
+}
