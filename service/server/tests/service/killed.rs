@@ -13,6 +13,7 @@ use tarehouse_proto::v1;
 use tarehouse_proto::v1::submission_service_client::SubmissionServiceClient;
 use tarehouse_proto::v1::transfer_service_client::TransferServiceClient;
 use tarehouse_store::{Health, Options, Store};
+use tokio::sync::mpsc::{UnboundedSender, unbounded_channel};
 use tokio::task::JoinHandle;
 use tonic::Status;
 use tonic::transport::Channel;
@@ -21,8 +22,9 @@ use crate::support::{PATIENCE, Pack};
 
 const ROUNDS: usize = 10;
 const CLIENTS: usize = 2;
-/// Answers after which a round is cut, at most.
-const ANSWERS_MAX: u64 = 24;
+/// Answers after which a round is cut: at least, and how many more at most. A package takes three.
+const ANSWERS_MIN: u64 = 3;
+const ANSWERS_MORE: u64 = 5;
 
 /// The service as a process of its own; killed when it is dropped.
 struct Running {
@@ -146,7 +148,7 @@ impl Dice {
 fn client(
     channel: Channel,
     jobs: Arc<Mutex<Vec<Job>>>,
-    answers: Arc<AtomicUsize>,
+    answers: UnboundedSender<()>,
     numbers: Arc<AtomicUsize>,
 ) -> JoinHandle<Status> {
     tokio::spawn(async move {
@@ -165,7 +167,7 @@ fn client(
             if let Err(status) = stepped {
                 return status;
             }
-            answers.fetch_add(1, Ordering::Relaxed);
+            let _ = answers.send(());
         }
     })
 }
@@ -244,25 +246,23 @@ async fn nothing_answered_for_is_lost_by_kills() {
     for _ in 0..ROUNDS {
         let mut running = Running::start(folder.path());
         check(&running.channel().await, &all(), seed).await;
-        let answers = Arc::new(AtomicUsize::new(0));
+        let (answers, mut answered) = unbounded_channel();
         let mut tasks = Vec::new();
         for jobs in &clients {
             let channel = running.channel().await;
             tasks.push(client(
                 channel,
                 Arc::clone(jobs),
-                Arc::clone(&answers),
+                answers.clone(),
                 Arc::clone(&numbers),
             ));
         }
-        let wanted = usize::try_from(1 + dice.below(ANSWERS_MAX)).unwrap();
+        drop(answers);
+        let wanted = ANSWERS_MIN + dice.below(ANSWERS_MORE + 1);
         let enough = async {
-            while answers.load(Ordering::Relaxed) < wanted {
-                assert!(
-                    tasks.iter().all(|task| !task.is_finished()),
-                    "seed {seed}: a call was refused before the kill"
-                );
-                tokio::task::yield_now().await;
+            for _ in 0..wanted {
+                let answer = answered.recv().await;
+                assert!(answer.is_some(), "seed {seed}: a call was refused");
             }
         };
         tokio::time::timeout(PATIENCE, enough).await.unwrap();

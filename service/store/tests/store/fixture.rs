@@ -127,7 +127,7 @@ fn a_store_of_the_first_format_opens_and_goes_on() {
     let store = Store::open(&root, options()).unwrap();
     assert_eq!(store.health(), Health::Good);
     assert!(store.index_was_rebuilt());
-    assert_eq!(store.last_seq(), 32);
+    assert_eq!(store.last_seq(), 34);
     let samples = all(&store);
     check_submissions(&store, &samples);
     check_reports(&store, &samples);
