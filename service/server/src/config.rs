@@ -31,6 +31,8 @@ pub struct Config {
     pub queue_length_max: usize,
     /// Drafts that one principal may hold open.
     pub drafts_per_principal_max: usize,
+    /// Records that one ranking reads; a ranking of more is refused.
+    pub ranked_records_max: usize,
     /// Upload streams open at the same time.
     pub upload_streams_max: usize,
     /// How long a stream of the caller may be silent.
@@ -113,6 +115,11 @@ impl Config {
             "200",
             Count(1, 100_000).parser(),
         );
+        let ranked = source.value(
+            "work.ranked_records_max",
+            "2000",
+            Count(1, 100_000).parser(),
+        );
         let streams = source.value("transfer.upload_streams_max", "16", Count(1, 1024).parser());
         let idle = source.value("transfer.stream_idle", "30 s", Seconds(1, 600).parser());
         let read = source.value("deadline.read", "15 s", Seconds(1, 600).parser());
@@ -145,6 +152,7 @@ impl Config {
                 workers: workers?,
                 queue_length_max: queue?,
                 drafts_per_principal_max: drafts?,
+                ranked_records_max: ranked?,
                 upload_streams_max: streams?,
                 stream_idle: idle?,
                 read_deadline: read?,

@@ -312,12 +312,25 @@ impl Core {
             .map(drop)
     }
 
-    /// Refuses a draft beyond the principal's quota; one that is open already is let through.
+    /// Refuses a draft beyond the principal's quota; a package or request that is known already opens none and is let
+    /// through.
     pub(crate) async fn check_draft_quota(
         &self,
         principal: &Principal,
         new: &NewSubmission,
     ) -> Result<(), Failure> {
+        let (who, request_id, digest) = (
+            principal.0.clone(),
+            new.request_id.clone(),
+            new.package_digest,
+        );
+        let known = self
+            .depot
+            .ask(move |store| store.find_submission(&who, &request_id, &digest))
+            .await?;
+        if known.is_some() {
+            return Ok(());
+        }
         let quota = self.config.drafts_per_principal_max;
         let filter = SubmissionFilter {
             state: Some(State::Draft),
@@ -337,13 +350,6 @@ impl Core {
                 .depot
                 .ask(move |store| store.list_submissions(&filter, &request))
                 .await?;
-            if drafts
-                .entries
-                .iter()
-                .any(|draft| draft.package_digest == new.package_digest)
-            {
-                return Ok(());
-            }
             count += drafts.entries.len();
             if count >= quota {
                 break;

@@ -5,11 +5,12 @@
 use std::sync::Arc;
 
 use prost::bytes::Bytes;
+use tarehouse_assay::report::Verdict;
 use tarehouse_proto::convert::digest_to_hex;
 use tarehouse_proto::package::MANIFEST_FILE;
 use tarehouse_proto::v1;
 use tarehouse_proto::v1::fetch_array_response::Frame;
-use tarehouse_store::{ObjectReader, ObjectRef, StoreError, SubmissionId};
+use tarehouse_store::{ObjectReader, ObjectRef, StoreError, SubmissionId, SubmissionView};
 use tokio::sync::OwnedSemaphorePermit;
 use tokio::sync::mpsc::Sender;
 use tonic::Status;
@@ -96,6 +97,9 @@ impl Fetch {
                         "array",
                         "only the force constants are projected",
                     ));
+                }
+                if view.projected.is_none() {
+                    return Err(not_projected(&view));
                 }
                 let reader = open_stored(core, move |store| store.open_projected(id)).await?;
                 (
@@ -202,6 +206,32 @@ async fn open_stored(
             },
             other => Failure::from(other),
         })
+}
+
+/// Why a submission has no projected constants.
+fn not_projected(view: &SubmissionView) -> Failure {
+    let (reason, why) = match (view.verdict, view.report) {
+        (Some(Verdict::Reject), _) => (
+            reason::PROJECTED_NOT_KEPT,
+            "was rejected; projected constants are kept of accepted and held submissions only",
+        ),
+        (Some(Verdict::Accept | Verdict::Hold), _) => (
+            reason::PROJECTED_NOT_KEPT,
+            "was examined without storing projected constants",
+        ),
+        (None, Some(_)) => (
+            reason::PROJECTED_NOT_KEPT,
+            "was held because its examination did not finish; there are no projected constants",
+        ),
+        (None, None) => (
+            reason::ARRAY_NOT_FOUND,
+            "has not been examined; there are no projected constants yet",
+        ),
+    };
+    Failure::NotFound {
+        reason,
+        message: format!("submission {} {why}", view.id),
+    }
 }
 
 fn header(array: String, object: ObjectRef, offset_bytes: u64) -> v1::FetchArrayHeader {

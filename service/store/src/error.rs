@@ -141,6 +141,16 @@ pub enum StoreError {
         /// Submission it opened.
         id: SubmissionId,
     },
+    /// The submission has changed since the revision that the caller knows.
+    #[error("submission {id} is at revision {present}, not {expected}")]
+    RevisionMismatch {
+        /// Submission.
+        id: SubmissionId,
+        /// Revision that the caller knows.
+        expected: u64,
+        /// Revision it has.
+        present: u64,
+    },
     /// The state does not allow it.
     #[error("submission {id}: {source}")]
     Forbidden {

@@ -20,8 +20,9 @@ pub(crate) enum Event {
     Sealed(SubmissionId),
     Crashed(Crashed),
     Examined(Box<Examined>),
-    Withdrawn(SubmissionId),
+    Withdrawn(Withdrawn),
     Retired(SubmissionId),
+    RequestBound(RequestBound),
 }
 
 /// A submission was opened.
@@ -74,6 +75,21 @@ pub(crate) struct Examined {
     pub(crate) superseded_by: Option<SubmissionId>,
 }
 
+/// The contributor took a submission back.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub(crate) struct Withdrawn {
+    pub(crate) id: SubmissionId,
+    /// The contributor's words; empty where none were given.
+    pub(crate) reason: String,
+}
+
+/// One more request id found a submission that was there before, and stands for it from now on.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub(crate) struct RequestBound {
+    pub(crate) id: SubmissionId,
+    pub(crate) request_id: String,
+}
+
 /// Why a payload could not be read.
 #[derive(Debug, Clone, PartialEq, Eq, thiserror::Error)]
 pub(crate) enum EventError {
@@ -91,8 +107,15 @@ impl Event {
             Self::ArrayStored(event) => event.id,
             Self::Crashed(event) => event.id,
             Self::Examined(event) => event.id,
-            Self::Sealed(id) | Self::Withdrawn(id) | Self::Retired(id) => *id,
+            Self::Withdrawn(event) => event.id,
+            Self::RequestBound(event) => event.id,
+            Self::Sealed(id) | Self::Retired(id) => *id,
         }
+    }
+
+    /// Whether it changes what can be read of its submission, and with that its revision.
+    pub(crate) fn changes_submission(&self) -> bool {
+        !matches!(self, Self::RequestBound(_))
     }
 
     /// Objects that must exist because of it.
@@ -106,7 +129,9 @@ impl Event {
                 objects.extend(event.projected);
                 objects
             }
-            Self::Sealed(_) | Self::Withdrawn(_) | Self::Retired(_) => Vec::new(),
+            Self::Sealed(_) | Self::Withdrawn(_) | Self::Retired(_) | Self::RequestBound(_) => {
+                Vec::new()
+            }
         }
     }
 }

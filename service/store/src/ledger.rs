@@ -8,7 +8,7 @@ use std::sync::Arc;
 
 use tarehouse_assay::submission::Digest;
 
-use crate::event::{Created, Event, Examined};
+use crate::event::{Created, Event, Examined, RequestBound, Withdrawn};
 use crate::id::SubmissionId;
 use crate::state::{State, Verb};
 use crate::view::{DeclaredArray, ObjectRef};
@@ -26,6 +26,8 @@ pub(crate) struct Entry {
     pub(crate) projected: Option<ObjectRef>,
     pub(crate) crashed_attempts: u32,
     pub(crate) created_seq: u64,
+    /// Number of the event that last changed it.
+    pub(crate) revision: u64,
     /// Place in the queue while queued.
     pub(crate) queue_seq: Option<u64>,
 }
@@ -47,7 +49,7 @@ impl Ledger {
         self.entries.get(&id)
     }
 
-    /// Submission that a request opened.
+    /// Submission that a request opened or found.
     pub(crate) fn by_request(&self, contributor: &str, request_id: &str) -> Option<SubmissionId> {
         self.requests
             .get(&(contributor.into(), request_id.to_owned()))
@@ -107,17 +109,16 @@ impl Ledger {
                 vec![changed]
             }
             Event::Examined(event) => self.examined(seq, event)?,
-            Event::Withdrawn(id) => {
-                let changed = self.step(seq, *id, Verb::Withdraw)?;
-                let entry = self.known(*id)?;
-                let key = (Arc::clone(&entry.contributor), entry.package_digest);
-                if self.packages.get(&key) == Some(id) {
-                    self.packages.remove(&key);
-                }
-                vec![changed]
-            }
+            Event::Withdrawn(event) => vec![self.withdrawn(seq, event)?],
             Event::Retired(id) => vec![self.step(seq, *id, Verb::Retire)?],
+            Event::RequestBound(event) => {
+                self.request_bound(event)?;
+                Vec::new()
+            }
         };
+        if event.changes_submission() {
+            self.known(event.id())?.revision = seq;
+        }
         self.last_seq = seq;
         Ok(changed)
     }
@@ -150,10 +151,34 @@ impl Ledger {
             projected: None,
             crashed_attempts: 0,
             created_seq: seq,
+            revision: seq,
             queue_seq: None,
         };
         self.entries.insert(event.id, entry);
         Ok(vec![(event.id, State::Draft)])
+    }
+
+    fn withdrawn(&mut self, seq: u64, event: &Withdrawn) -> Result<(SubmissionId, State), String> {
+        let changed = self.step(seq, event.id, Verb::Withdraw)?;
+        let entry = self.known(event.id)?;
+        let key = (Arc::clone(&entry.contributor), entry.package_digest);
+        if self.packages.get(&key) == Some(&event.id) {
+            self.packages.remove(&key);
+        }
+        Ok(changed)
+    }
+
+    fn request_bound(&mut self, event: &RequestBound) -> Result<(), String> {
+        let contributor = Arc::clone(&self.known(event.id)?.contributor);
+        let key = (contributor, event.request_id.clone());
+        let earlier = self.requests.insert(key, event.id);
+        match earlier.filter(|earlier| *earlier != event.id) {
+            None => Ok(()),
+            Some(earlier) => Err(format!(
+                "request id {} stands for submission {earlier} and for {}",
+                event.request_id, event.id
+            )),
+        }
     }
 
     fn examined(
@@ -197,6 +222,7 @@ impl Ledger {
         let entry = self.known(id)?;
         let state = entry.state.after(verb).map_err(|error| error.to_string())?;
         entry.state = state;
+        entry.revision = seq;
         let left = entry.queue_seq.take();
         if state == State::Queued {
             entry.queue_seq = Some(seq);

@@ -12,6 +12,8 @@ pub const MANIFEST_BYTES_MAX: usize = 8 << 20;
 pub const REPORT_BYTES_MAX: usize = 64 << 20;
 /// Any name or label, bytes.
 pub const TEXT_BYTES_MAX: usize = 512;
+/// Reason of a withdrawal, bytes.
+pub const REASON_BYTES_MAX: usize = 1024;
 /// Encoded summary of a record, bytes.
 pub const SUMMARY_BYTES_MAX: usize = 4096;
 /// Entries of one page.

@@ -144,6 +144,8 @@ pub struct SubmissionView {
     pub supersedes: Option<SubmissionId>,
     /// Newer submission that took it out of the catalogue.
     pub superseded_by: Option<SubmissionId>,
+    /// Why the contributor took it back, where that was said.
+    pub withdrawal_reason: Option<String>,
 }
 
 /// Numbers of an accepted submission that lists and rankings need; at most

@@ -33,6 +33,17 @@ impl Service {
 
     /// All records of a filter, by compound, then form, then name. The store lists them in other orders.
     async fn gather(&self, filter: RecordFilter) -> Result<Vec<RecordView>, Failure> {
+        let mut records = self.gather_until(filter, usize::MAX).await?;
+        records.sort_by_cached_key(place);
+        Ok(records)
+    }
+
+    /// Records of a filter, newest first; reads on until there are more than `count_max` or no more.
+    async fn gather_until(
+        &self,
+        filter: RecordFilter,
+        count_max: usize,
+    ) -> Result<Vec<RecordView>, Failure> {
         let mut records = Vec::new();
         let mut page = PageRequest {
             size: GATHER_PAGE,
@@ -46,13 +57,11 @@ impl Service {
                 .ask(move |store| store.list_records(&filter, &request))
                 .await?;
             records.extend(found.entries);
-            if found.next_token.is_empty() {
-                break;
+            if found.next_token.is_empty() || records.len() > count_max {
+                return Ok(records);
             }
             page.token = found.next_token;
         }
-        records.sort_by_cached_key(place);
-        Ok(records)
     }
 
     async fn list(
@@ -126,36 +135,51 @@ impl Service {
             .map_err(|_| Failure::field("cell_protocol", "not a known cell protocol"))?;
         let grid = &self.core.config.policy.limits.temperature_grid_k;
         let temperatures = temperatures(request.temperatures_k, grid)?;
-        let name = compound.clone();
-        let records = self
-            .core
-            .depot
-            .ask(move |store| store.records_of_compound(&name))
-            .await?;
-        if records.is_empty() {
-            return Err(Failure::NotFound {
-                reason: reason::COMPOUND_NOT_FOUND,
-                message: format!("no record of \"{compound}\"; ListCompounds tells the names"),
-            });
-        }
+        let filter = RecordFilter {
+            compound: Some(compound),
+            level: request.constants_level.as_deref().map(normalised),
+            energy_level: request.energy_level.as_deref().map(normalised),
+            ..RecordFilter::default()
+        };
         let mut candidates = Vec::new();
-        for record in records.iter().take(limits::RANKED_RECORDS_MAX) {
+        for record in &self.ranked_records(filter).await? {
             let candidate = self.candidate(record).await?;
-            let level = &candidate.level;
-            let wanted = |filter: &Option<String>, level: &str| {
-                filter
-                    .as_ref()
-                    .is_none_or(|filter| normalised(filter) == level)
-            };
-            if wanted(&request.energy_level, &level.energy)
-                && wanted(&request.constants_level, &level.constants)
-                && (protocol == v1::CellProtocol::Unspecified
-                    || level.cell_protocol == i32::from(protocol))
+            if protocol == v1::CellProtocol::Unspecified
+                || candidate.level.cell_protocol == i32::from(protocol)
             {
                 candidates.push(candidate);
             }
         }
         Ok(ranking::rank(candidates, &temperatures))
+    }
+
+    /// The records of a ranking. Too many are refused: a table that lacks some would look like one that has them all.
+    async fn ranked_records(&self, filter: RecordFilter) -> Result<Vec<RecordView>, Failure> {
+        let count_max = self.core.config.ranked_records_max;
+        let records = self.gather_until(filter.clone(), count_max).await?;
+        let compound = filter.compound.unwrap_or_default();
+        if records.len() > count_max {
+            return Err(Failure::Exhausted {
+                reason: reason::RANKING_TOO_LARGE,
+                message: format!(
+                    "\"{compound}\" has more than the {count_max} records that one ranking reads; \
+                     name an energy level or a constants level"
+                ),
+            });
+        }
+        if records.is_empty() {
+            let of_compound = RecordFilter {
+                compound: Some(compound.clone()),
+                ..RecordFilter::default()
+            };
+            if self.gather_until(of_compound, 0).await?.is_empty() {
+                return Err(Failure::NotFound {
+                    reason: reason::COMPOUND_NOT_FOUND,
+                    message: format!("no record of \"{compound}\"; ListCompounds tells the names"),
+                });
+            }
+        }
+        Ok(records)
     }
 
     async fn candidate(&self, record: &RecordView) -> Result<Candidate, Failure> {

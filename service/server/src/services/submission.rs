@@ -1,14 +1,14 @@
 //! SubmissionService: what contributors do with a submission.
 
+mod opening;
+
 use std::sync::Arc;
 
 use prost::Message as _;
-use tarehouse_proto::convert::{digest_from_hex, digest_to_hex};
-use tarehouse_proto::package::{self, ArrayIdentity, ManifestSummary};
-use tarehouse_proto::{limits as package_limits, v1};
+use tarehouse_proto::package;
+use tarehouse_proto::v1;
 use tarehouse_store::{
-    DeclaredArray, NewSubmission, PageRequest, State, StoreError, SubmissionFilter, SubmissionId,
-    SubmissionView,
+    PageRequest, State, StoreError, SubmissionFilter, SubmissionId, SubmissionView,
 };
 use tokio_stream::wrappers::ReceiverStream;
 use tonic::{Request, Response, Status};
@@ -18,7 +18,8 @@ use crate::failure::{Breach, Failure, reason};
 use crate::judge::{self, Crash};
 use crate::layers::Principal;
 use crate::names::{self, Resource, token};
-use crate::{limits, watch, wire};
+use crate::{watch, wire};
+use opening::{declared_arrays, invalid_package, new_submission, request_id, unnamed};
 
 /// Pages of the store that one filtered page may look through.
 const FILTERED_PAGES_MAX: usize = 64;
@@ -90,12 +91,13 @@ impl Service {
         let reason = names::optional_text("reason", request.reason)?.unwrap_or_default();
         let view = core.submission(id).await?;
         if !request.etag.is_empty() && request.etag != wire::etag(&view) {
-            return Err(etag_mismatch());
+            return Err(Failure::etag_mismatch());
         }
-        tracing::info!(%id, principal = %principal.0, %reason, "withdrawal");
+        // The store holds this against the revision once more, when nobody else can change it.
+        let expected = Some(view.revision).filter(|_| !request.etag.is_empty());
         let actor = core.actor_of(&principal);
         core.depot
-            .ask(move |store| store.withdraw(&actor, id))
+            .ask(move |store| store.withdraw(&actor, id, &reason, expected))
             .await?;
         core.submission_message(id).await
     }
@@ -169,168 +171,11 @@ impl Service {
     }
 }
 
-fn request_id(text: &str, validate_only: bool) -> Result<String, Failure> {
-    if text.is_empty() && validate_only {
-        return Ok(String::new());
-    }
-    let uuid = uuid::Uuid::parse_str(text)
-        .map_err(|_| Failure::field("request_id", "a UUID is wanted"))?;
-    Ok(uuid.simple().to_string())
-}
-
-/// The violations of a package as a failure.
-pub(super) fn invalid_package(violations: &package::Violations) -> Failure {
-    let breaches = violations
-        .listed()
-        .iter()
-        .map(|violation| Breach {
-            field: match violation.key.as_str() {
-                "" => violation.file.clone(),
-                key => format!("{}: {key}", violation.file),
-            },
-            message: match violation.line {
-                Some(line) => format!("{} (line {line})", violation.message),
-                None => violation.message.clone(),
-            },
-        })
-        .collect();
-    Failure::Invalid {
-        reason: reason::PACKAGE_INVALID,
-        message: "the package breaks the package format".to_owned(),
-        breaches,
-        unlisted_count: violations.unlisted_count(),
-    }
-}
-
 fn undecodable(crash: Crash) -> Failure {
     match crash {
         Crash::Decode(violations) => invalid_package(&violations),
         Crash::Read(error) => Failure::from(error),
         crash @ (Crash::Examine(_) | Crash::Panic(_)) => Failure::internal(crash),
-    }
-}
-
-/// Holds the declarations against the arrays that the manifest names; everything that disagrees, at once.
-fn declared_arrays(
-    declared: &[v1::ArrayDeclaration],
-    summary: &ManifestSummary,
-) -> Result<Vec<DeclaredArray>, Failure> {
-    let (mut arrays, mut breaches) = (Vec::new(), Vec::new());
-    for (k, array) in declared.iter().take(limits::ARRAYS_MAX + 1).enumerate() {
-        let mut breach = |field: &str, message: String| {
-            let field = format!("arrays[{k}]{field}");
-            breaches.push(Breach { field, message });
-        };
-        let expected = summary
-            .arrays
-            .iter()
-            .find(|expected| expected.name == array.name);
-        let digest = digest_from_hex(&array.digest);
-        match expected {
-            None => breach(".name", "the manifest names no such array".to_owned()),
-            Some(expected) if !expected.accepts_size(array.size_bytes) => breach(
-                ".size_bytes",
-                format!(
-                    "{} bytes cannot hold a header and the {} bytes of shape {:?}, at most {} in all",
-                    array.size_bytes,
-                    expected.data_bytes,
-                    expected.shape,
-                    package_limits::ARRAY_BYTES.max
-                ),
-            ),
-            Some(_) => {}
-        }
-        if digest.is_none() {
-            breach(
-                ".digest",
-                "64 lower-case hexadecimal digits are wanted".to_owned(),
-            );
-        }
-        if declared
-            .iter()
-            .take(k)
-            .any(|earlier| earlier.name == array.name)
-        {
-            breach(".name", "declared twice".to_owned());
-        }
-        arrays.extend(digest.map(|digest| DeclaredArray {
-            name: array.name.clone(),
-            size: array.size_bytes,
-            digest,
-        }));
-    }
-    for expected in &summary.arrays {
-        if !declared.iter().any(|array| array.name == expected.name) {
-            let message = format!(
-                "{} is named in the manifest but not declared",
-                expected.name
-            );
-            breaches.push(Breach {
-                field: "arrays".to_owned(),
-                message,
-            });
-        }
-    }
-    if breaches.is_empty() {
-        return Ok(arrays);
-    }
-    Err(Failure::Invalid {
-        reason: reason::ARRAYS_DISAGREE,
-        message: "the declared arrays do not agree with the manifest".to_owned(),
-        breaches,
-        unlisted_count: declared.len().saturating_sub(limits::ARRAYS_MAX + 1),
-    })
-}
-
-fn new_submission(
-    request: &v1::CreateSubmissionRequest,
-    request_id: String,
-    summary: ManifestSummary,
-    arrays: Vec<DeclaredArray>,
-) -> NewSubmission {
-    let identities: Vec<ArrayIdentity<'_>> = arrays
-        .iter()
-        .map(|array| ArrayIdentity {
-            name: &array.name,
-            size_bytes: array.size,
-            digest: array.digest,
-        })
-        .collect();
-    let package_digest = package::package_digest(&request.manifest, &identities);
-    let identity = summary.manifest.identity;
-    NewSubmission {
-        request_id,
-        package_digest,
-        manifest: request.manifest.to_vec(),
-        arrays,
-        compound: identity.compound,
-        form: identity.form,
-        formula: identity.formula.to_string(),
-        contributor_key: identity.contributor_key,
-    }
-}
-
-/// What creating would have answered, without a name.
-fn unnamed(new: &NewSubmission, principal: &Principal) -> v1::Submission {
-    v1::Submission {
-        state: v1::State::Draft.into(),
-        package_digest: digest_to_hex(&new.package_digest),
-        compound: new.compound.clone(),
-        form: new.form.clone(),
-        formula: new.formula.clone(),
-        contributor: principal.0.clone(),
-        contributor_key: new.contributor_key.clone().unwrap_or_default(),
-        arrays: new
-            .arrays
-            .iter()
-            .map(|array| v1::Array {
-                name: array.name.clone(),
-                size_bytes: array.size,
-                digest: digest_to_hex(&array.digest),
-                committed_bytes: 0,
-            })
-            .collect(),
-        ..v1::Submission::default()
     }
 }
 
@@ -352,14 +197,6 @@ fn check_arrays_stored(view: &SubmissionView) -> Result<(), Failure> {
         message: "arrays are missing".to_owned(),
         breaches,
     })
-}
-
-fn etag_mismatch() -> Failure {
-    Failure::Conflict {
-        reason: reason::ETAG_MISMATCH,
-        message: "the submission has changed since that etag; read it again".to_owned(),
-        retry_after: None,
-    }
 }
 
 #[tonic::async_trait]

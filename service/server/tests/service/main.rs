@@ -9,6 +9,8 @@
 )]
 
 mod binary;
+mod kept;
+mod killed;
 mod lists;
 mod refusals;
 mod running;

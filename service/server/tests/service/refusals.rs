@@ -156,8 +156,14 @@ async fn a_package_is_submitted_once() {
         );
     }
     assert_eq!(names.len(), 1);
+    let opening = Pack::new("velnaric acid", "III", -10.0).request();
+    house
+        .submissions()
+        .create_submission(opening.clone())
+        .await
+        .unwrap();
     let other = v1::CreateSubmissionRequest {
-        request_id: request.request_id,
+        request_id: opening.request_id,
         ..Pack::new("velnaric acid", "II", -10.0).request()
     };
     let status = house
@@ -274,7 +280,7 @@ async fn drafts_are_counted_per_principal() {
         "principal:local"
     );
     assert!(details.retry_info().is_some());
-    // One that is open already is found again, and a place that becomes free is used.
+    // One that is there already is found again, and a place that becomes free is used.
     assert_eq!(house.create(&packs[1]).await.name, second.name);
     let request = v1::WithdrawSubmissionRequest {
         name: second.name,
@@ -286,6 +292,93 @@ async fn drafts_are_counted_per_principal() {
         .await
         .unwrap();
     house.create(&packs[2]).await;
+}
+
+#[tokio::test]
+async fn a_full_quota_keeps_nobody_from_what_is_there_already() {
+    let house = House::with(Fake::accepting(), |config| {
+        config.drafts_per_principal_max = 1;
+    })
+    .await;
+    let [record, draft, gone] =
+        ["I", "II", "III"].map(|form| Pack::new("velnaric acid", form, -1.0));
+    let accepted = house.submit(&record).await;
+    assert_eq!(accepted.state(), v1::State::Accepted);
+    let create = |request: v1::CreateSubmissionRequest| {
+        let mut submissions = house.submissions();
+        async move {
+            let answer = submissions.create_submission(request).await?;
+            Ok::<_, tonic::Status>(answer.into_inner().submission.unwrap())
+        }
+    };
+    let withdrawn_request = gone.request();
+    let withdrawn = create(withdrawn_request.clone()).await.unwrap();
+    let request = v1::WithdrawSubmissionRequest {
+        name: withdrawn.name.clone(),
+        ..Default::default()
+    };
+    house
+        .submissions()
+        .withdraw_submission(request)
+        .await
+        .unwrap();
+    house.create(&draft).await;
+    let full = create(Pack::new("velnaric acid", "IV", -1.0).request()).await;
+    assert_refused(&full.unwrap_err(), Code::ResourceExhausted, "DRAFT_QUOTA");
+    // By its package, and by its request id alone where the package was withdrawn.
+    let again = create(record.request()).await.unwrap();
+    assert_eq!(
+        (&again.name, again.state()),
+        (&accepted.name, v1::State::Accepted)
+    );
+    let again = create(withdrawn_request.clone()).await.unwrap();
+    assert_eq!(
+        (&again.name, again.state()),
+        (&withdrawn.name, v1::State::Withdrawn)
+    );
+    let anew = create(gone.request()).await;
+    assert_refused(&anew.unwrap_err(), Code::ResourceExhausted, "DRAFT_QUOTA");
+    // A request id that stands for another package is that conflict, not a matter of the quota.
+    let mut taken = draft.request();
+    taken.request_id = withdrawn_request.request_id;
+    let conflict = create(taken).await;
+    assert_refused(
+        &conflict.unwrap_err(),
+        Code::AlreadyExists,
+        "REQUEST_ID_CONFLICT",
+    );
+}
+
+#[tokio::test]
+async fn a_request_id_that_found_a_package_is_taken_after_a_restart_too() {
+    let house = House::new(Fake::accepting()).await;
+    let [first, other] = ["I", "II"].map(|form| Pack::new("velnaric acid", form, -10.0));
+    let name = house.create(&first).await.name;
+    let second_request = first.request();
+    let found = house
+        .submissions()
+        .create_submission(second_request.clone())
+        .await
+        .unwrap();
+    assert_eq!(found.into_inner().submission.unwrap().name, name);
+    let mut reused = other.request();
+    reused.request_id.clone_from(&second_request.request_id);
+    let refused = house.submissions().create_submission(reused.clone()).await;
+    assert_refused(
+        &refused.unwrap_err(),
+        Code::AlreadyExists,
+        "REQUEST_ID_CONFLICT",
+    );
+    house.service.shutdown().await.unwrap();
+    let house = House::again(house.folder, Fake::accepting(), |_| {}).await;
+    let refused = house.submissions().create_submission(reused).await;
+    assert_refused(
+        &refused.unwrap_err(),
+        Code::AlreadyExists,
+        "REQUEST_ID_CONFLICT",
+    );
+    let again = house.submissions().create_submission(second_request).await;
+    assert_eq!(again.unwrap().into_inner().submission.unwrap().name, name);
 }
 
 #[tokio::test]
@@ -314,6 +407,16 @@ async fn a_withdrawal_is_guarded_by_the_etag_and_ends_a_watch() {
     // The examination that was running meanwhile changes nothing.
     gate.open();
     house.service.shutdown().await.unwrap();
+    let store = tarehouse_store::Store::open(
+        house.folder.path().join("store"),
+        tarehouse_store::Options::default(),
+    )
+    .unwrap();
+    let id = name.strip_prefix("submissions/").unwrap().parse().unwrap();
+    let reason = store.get_submission(id).unwrap().withdrawal_reason;
+    assert_eq!(reason.as_deref(), Some("a better one follows"));
+    store.close().unwrap();
+    drop(store);
     let house = House::again(house.folder, Fake::accepting(), |_| {}).await;
     assert_eq!(house.get(&name).await.state(), v1::State::Withdrawn);
     let status = house.seal(&name).await.unwrap_err();

@@ -12,6 +12,7 @@ use tarehouse_physics::ForceConstants;
 use tarehouse_proto::package::npy;
 use tarehouse_proto::v1;
 use tarehouse_proto::v1::catalog_service_client::CatalogServiceClient;
+use tarehouse_proto::v1::fetch_array_response::Frame as Fetched;
 use tarehouse_proto::v1::send_array_request::Frame;
 use tarehouse_proto::v1::submission_service_client::SubmissionServiceClient;
 use tarehouse_proto::v1::transfer_service_client::TransferServiceClient;
@@ -408,6 +409,36 @@ impl House {
         let answer = self.submissions().get_report(request).await?;
         Ok(answer.into_inner().report.unwrap())
     }
+}
+
+/// Fetches a file whole: its header and its bytes.
+pub(crate) async fn fetch(
+    house: &House,
+    name: &str,
+    array: &str,
+    treatment: v1::Treatment,
+    offset_bytes: u64,
+) -> Result<(v1::FetchArrayHeader, Vec<u8>), Status> {
+    let request = v1::FetchArrayRequest {
+        name: name.to_owned(),
+        array: array.to_owned(),
+        treatment: treatment.into(),
+        offset_bytes,
+    };
+    let mut stream = house.transfers().fetch_array(request).await?.into_inner();
+    let Some(Fetched::Header(header)) = stream.message().await?.unwrap().frame else {
+        panic!("the header comes first");
+    };
+    let mut bytes = Vec::new();
+    while let Some(message) = stream.message().await? {
+        let Some(Fetched::Chunk(chunk)) = message.frame else {
+            panic!("chunks follow")
+        };
+        assert_eq!(chunk.offset_bytes, offset_bytes + bytes.len() as u64);
+        assert_eq!(chunk.crc32, crc32fast::hash(&chunk.data));
+        bytes.extend_from_slice(&chunk.data);
+    }
+    Ok((header, bytes))
 }
 
 /// Asserts code and reason of a refusal, and that it names the house.

@@ -6,11 +6,10 @@ use prost::Message as _;
 use tarehouse_assay::report::Verdict;
 use tarehouse_proto::package::npy;
 use tarehouse_proto::v1;
-use tarehouse_proto::v1::fetch_array_response::Frame;
 use tarehouse_proto::v1::watch_submission_response::Event;
 use tonic::{Code, Status};
 
-use crate::support::{ARRAY, Fake, Gate, House, Pack, assert_refused, report};
+use crate::support::{ARRAY, Fake, Gate, House, Pack, assert_refused, fetch, report};
 
 #[tokio::test]
 async fn a_package_goes_from_draft_to_record() {
@@ -168,35 +167,6 @@ async fn forms_are_ranked_and_change_places_with_temperature() {
     );
     let outside = rank(&house, vec![10.0, 1e6]).await.unwrap_err();
     assert_refused(&outside, Code::InvalidArgument, "TEMPERATURE_OUTSIDE");
-}
-
-async fn fetch(
-    house: &House,
-    name: &str,
-    array: &str,
-    treatment: v1::Treatment,
-    offset_bytes: u64,
-) -> Result<(v1::FetchArrayHeader, Vec<u8>), Status> {
-    let request = v1::FetchArrayRequest {
-        name: name.to_owned(),
-        array: array.to_owned(),
-        treatment: treatment.into(),
-        offset_bytes,
-    };
-    let mut stream = house.transfers().fetch_array(request).await?.into_inner();
-    let Some(Frame::Header(header)) = stream.message().await?.unwrap().frame else {
-        panic!("the header comes first");
-    };
-    let mut bytes = Vec::new();
-    while let Some(message) = stream.message().await? {
-        let Some(Frame::Chunk(chunk)) = message.frame else {
-            panic!("chunks follow")
-        };
-        assert_eq!(chunk.offset_bytes, offset_bytes + bytes.len() as u64);
-        assert_eq!(chunk.crc32, crc32fast::hash(&chunk.data));
-        bytes.extend_from_slice(&chunk.data);
-    }
-    Ok((header, bytes))
 }
 
 #[tokio::test]

@@ -1,12 +1,16 @@
 //! Encoded form of events. Tags are only ever appended; a changed meaning gets a new version.
 
+mod summary;
+
 use prost::Message;
 use tarehouse_assay::report::Verdict;
 
-use super::{ArrayStored, Crashed, Created, Event, EventError, Examined};
+use super::{ArrayStored, Crashed, Created, Event, EventError, Examined, RequestBound, Withdrawn};
 use crate::id::SubmissionId;
 use crate::state::State;
-use crate::view::{DeclaredArray, ObjectRef, RecordSummary};
+use crate::view::{DeclaredArray, ObjectRef};
+
+pub(crate) use summary::SummaryWire;
 
 const CREATED: u32 = 1;
 const ARRAY_STORED: u32 = 2;
@@ -15,6 +19,7 @@ const CRASHED: u32 = 4;
 const EXAMINED: u32 = 5;
 const WITHDRAWN: u32 = 6;
 const RETIRED: u32 = 7;
+const REQUEST_BOUND: u32 = 8;
 const VERSION: u32 = 1;
 
 #[derive(Clone, PartialEq, Eq, Message)]
@@ -72,6 +77,23 @@ struct IdWire {
 }
 
 #[derive(Clone, PartialEq, Eq, Message)]
+struct WithdrawnWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+    /// Absent in the oldest payloads.
+    #[prost(string, tag = "2")]
+    reason: String,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
+struct RequestBoundWire {
+    #[prost(bytes = "vec", tag = "1")]
+    id: Vec<u8>,
+    #[prost(string, tag = "2")]
+    request_id: String,
+}
+
+#[derive(Clone, PartialEq, Eq, Message)]
 struct CrashedWire {
     #[prost(bytes = "vec", tag = "1")]
     id: Vec<u8>,
@@ -103,74 +125,6 @@ struct ExaminedWire {
     supersedes: Option<Vec<u8>>,
     #[prost(bytes = "vec", optional, tag = "8")]
     superseded_by: Option<Vec<u8>>,
-}
-
-/// Encoded [`RecordSummary`].
-#[derive(Clone, PartialEq, Message)]
-pub(crate) struct SummaryWire {
-    #[prost(string, tag = "1")]
-    level: String,
-    #[prost(string, tag = "2")]
-    energy_level: String,
-    #[prost(double, tag = "3")]
-    lattice_energy_kj_per_mol: f64,
-    #[prost(double, tag = "4")]
-    zero_point_energy_kj_per_mol: f64,
-    #[prost(bool, tag = "5")]
-    defined: bool,
-    #[prost(double, repeated, tag = "6")]
-    temperature_k: Vec<f64>,
-    #[prost(double, repeated, tag = "7")]
-    central_kj_per_mol: Vec<f64>,
-    #[prost(double, repeated, tag = "8")]
-    lower_kj_per_mol: Vec<f64>,
-    #[prost(double, repeated, tag = "9")]
-    upper_kj_per_mol: Vec<f64>,
-    #[prost(double, repeated, tag = "10")]
-    entropy_j_per_mol_k: Vec<f64>,
-    #[prost(double, optional, tag = "11")]
-    density_g_per_cm3: Option<f64>,
-    #[prost(uint32, optional, tag = "12")]
-    space_group_number: Option<u32>,
-}
-
-impl From<&RecordSummary> for SummaryWire {
-    fn from(summary: &RecordSummary) -> Self {
-        let summary = summary.clone();
-        Self {
-            level: summary.level,
-            energy_level: summary.energy_level,
-            lattice_energy_kj_per_mol: summary.lattice_energy_kj_per_mol,
-            zero_point_energy_kj_per_mol: summary.zero_point_energy_kj_per_mol,
-            defined: summary.defined,
-            temperature_k: summary.temperature_k,
-            central_kj_per_mol: summary.central_kj_per_mol,
-            lower_kj_per_mol: summary.lower_kj_per_mol,
-            upper_kj_per_mol: summary.upper_kj_per_mol,
-            entropy_j_per_mol_k: summary.entropy_j_per_mol_k,
-            density_g_per_cm3: summary.density_g_per_cm3,
-            space_group_number: summary.space_group_number,
-        }
-    }
-}
-
-impl From<SummaryWire> for RecordSummary {
-    fn from(wire: SummaryWire) -> Self {
-        Self {
-            level: wire.level,
-            energy_level: wire.energy_level,
-            lattice_energy_kj_per_mol: wire.lattice_energy_kj_per_mol,
-            zero_point_energy_kj_per_mol: wire.zero_point_energy_kj_per_mol,
-            defined: wire.defined,
-            temperature_k: wire.temperature_k,
-            central_kj_per_mol: wire.central_kj_per_mol,
-            lower_kj_per_mol: wire.lower_kj_per_mol,
-            upper_kj_per_mol: wire.upper_kj_per_mol,
-            entropy_j_per_mol_k: wire.entropy_j_per_mol_k,
-            density_g_per_cm3: wire.density_g_per_cm3,
-            space_group_number: wire.space_group_number,
-        }
-    }
 }
 
 impl From<ObjectRef> for ObjectWire {
@@ -254,15 +208,28 @@ impl Event {
                 (CRASHED, wire.encode_to_vec())
             }
             Self::Examined(event) => (EXAMINED, examined_wire(event).encode_to_vec()),
-            Self::Withdrawn(id) => (WITHDRAWN, IdWire { id: id_wire(*id) }.encode_to_vec()),
+            Self::Withdrawn(event) => {
+                let wire = WithdrawnWire {
+                    id: id_wire(event.id),
+                    reason: event.reason.clone(),
+                };
+                (WITHDRAWN, wire.encode_to_vec())
+            }
             Self::Retired(id) => (RETIRED, IdWire { id: id_wire(*id) }.encode_to_vec()),
+            Self::RequestBound(event) => {
+                let wire = RequestBoundWire {
+                    id: id_wire(event.id),
+                    request_id: event.request_id.clone(),
+                };
+                (REQUEST_BOUND, wire.encode_to_vec())
+            }
         };
         (kind, VERSION, payload)
     }
 
     /// Reads a payload by its kind and version.
     pub(crate) fn decode(kind: u32, version: u32, payload: &[u8]) -> Result<Self, EventError> {
-        if version != VERSION || !(CREATED..=RETIRED).contains(&kind) {
+        if version != VERSION || !(CREATED..=REQUEST_BOUND).contains(&kind) {
             return Err(EventError::Unknown { kind, version });
         }
         decode_first(kind, payload).map_err(|detail| EventError::Payload { kind, detail })
@@ -294,11 +261,24 @@ fn decode_first(kind: u32, payload: &[u8]) -> Result<Event, String> {
             }))
         }
         EXAMINED => Ok(Event::Examined(Box::new(examined_of(message(payload)?)?))),
+        WITHDRAWN => {
+            let wire: WithdrawnWire = message(payload)?;
+            Ok(Event::Withdrawn(Withdrawn {
+                id: id_of(wire.id)?,
+                reason: wire.reason,
+            }))
+        }
+        REQUEST_BOUND => {
+            let wire: RequestBoundWire = message(payload)?;
+            Ok(Event::RequestBound(RequestBound {
+                id: id_of(wire.id)?,
+                request_id: wire.request_id,
+            }))
+        }
         _ => {
             let id = id_of(message::<IdWire>(payload)?.id)?;
             Ok(match kind {
                 SEALED => Event::Sealed(id),
-                WITHDRAWN => Event::Withdrawn(id),
                 _ => Event::Retired(id),
             })
         }
@@ -382,3 +362,6 @@ fn examined_of(wire: ExaminedWire) -> Result<Examined, &'static str> {
         superseded_by: wire.superseded_by.map(id_of).transpose()?,
     })
 }
+
+#[cfg(test)]
+mod tests;

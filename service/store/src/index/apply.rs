@@ -91,12 +91,15 @@ fn one(tx: &TransactionalTree, change: &Committed) -> Step<()> {
             put(tx, change, id, row)
         }
         Event::Examined(event) => examined(tx, change, event),
-        Event::Withdrawn(_) => {
+        Event::Withdrawn(event) => {
             let mut row = submission(tx, id)?;
+            row.withdrawal_reason = Some(event.reason.clone()).filter(|reason| !reason.is_empty());
             move_to(tx, id, &mut row, State::Withdrawn)?;
             put(tx, change, id, row)
         }
         Event::Retired(_) => retire(tx, change, id, None),
+        // Request ids are for decisions only, which ask the ledger; a submission that is missing here shows damage.
+        Event::RequestBound(_) => submission(tx, id).map(drop),
     }
 }
 

@@ -38,7 +38,7 @@ struct MarkWire {
 }
 
 /// Shape of keys and rows in the index. Raise it whenever they change.
-const SHAPE: u32 = 1;
+const SHAPE: u32 = 2;
 
 /// A clean mark that was read.
 #[derive(Debug, Clone, PartialEq, Eq)]

@@ -69,6 +69,8 @@ pub(crate) struct SubmissionRow {
     pub(crate) superseded_by: Option<Vec<u8>>,
     #[prost(string, tag = "24")]
     pub(crate) updated_by: String,
+    #[prost(string, optional, tag = "25")]
+    pub(crate) withdrawal_reason: Option<String>,
 }
 
 #[derive(Clone, PartialEq, Message)]
@@ -195,6 +197,7 @@ impl SubmissionRow {
             program_version: self.program_version,
             supersedes: self.supersedes.map(id_of).transpose()?,
             superseded_by: self.superseded_by.map(id_of).transpose()?,
+            withdrawal_reason: self.withdrawal_reason,
         })
     }
 }

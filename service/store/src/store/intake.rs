@@ -2,13 +2,16 @@
 
 use std::collections::HashSet;
 
+use tarehouse_assay::submission::Digest;
+
 use super::{Inner, Store};
 use crate::error::{StoreError, Violation};
-use crate::event::{Created, Event};
+use crate::event::{Created, Event, RequestBound, Withdrawn};
 use crate::id::SubmissionId;
 use crate::keylock;
 use crate::limits::{
-    ARRAY_BYTES_MAX, ARRAY_COUNT_MAX, ARRAY_NAME_BYTES_MAX, MANIFEST_BYTES_MAX, TEXT_BYTES_MAX,
+    ARRAY_BYTES_MAX, ARRAY_COUNT_MAX, ARRAY_NAME_BYTES_MAX, MANIFEST_BYTES_MAX, REASON_BYTES_MAX,
+    TEXT_BYTES_MAX,
 };
 use crate::state::{State, Verb};
 use crate::view::{Actor, NewSubmission, Receipt};
@@ -17,7 +20,8 @@ impl Store {
     /// Opens a submission, or finds the one that this request or this package opened before.
     ///
     /// Safe under any number of equal calls at once: one submission comes of them. The answer is given when the
-    /// submission is durable.
+    /// submission is durable. A request id that finds an existing package is bound to it, durably too: from then on it
+    /// stands for that package alone.
     ///
     /// # Errors
     /// [`StoreError::Invalid`] with everything that is wrong; [`StoreError::RequestConflict`] if the request id was used
@@ -38,8 +42,17 @@ impl Store {
             keylock::request(contributor, &new.request_id),
             keylock::package(contributor, &new.package_digest),
         ]);
-        if let Some(receipt) = inner.known_before(contributor, &new)? {
-            return Ok(receipt);
+        if let Some(known) =
+            inner.known_before(contributor, &new.request_id, &new.package_digest)?
+        {
+            if !known.by_request {
+                let event = RequestBound {
+                    id: known.receipt.id,
+                    request_id: new.request_id,
+                };
+                inner.commit(actor, Event::RequestBound(event))?;
+            }
+            return Ok(known.receipt);
         }
         let id = SubmissionId::random();
         let manifest = inner.put(&new.manifest)?;
@@ -61,6 +74,23 @@ impl Store {
             created: true,
             state: State::Draft,
         })
+    }
+
+    /// The receipt that [`Store::create_submission`] would find for this request or this package; none where it would
+    /// open a submission. Binds and changes nothing.
+    ///
+    /// # Errors
+    /// [`StoreError::RequestConflict`] if the request id was used with another package.
+    pub fn find_submission(
+        &self,
+        contributor: &str,
+        request_id: &str,
+        package_digest: &Digest,
+    ) -> Result<Option<Receipt>, StoreError> {
+        let known = self
+            .inner
+            .known_before(contributor, request_id, package_digest)?;
+        Ok(known.map(|known| known.receipt))
     }
 
     /// Says that everything is there; the submission is queued.
@@ -85,19 +115,41 @@ impl Store {
         Ok(state)
     }
 
-    /// Takes a submission back; its partial uploads are dropped.
+    /// Takes a submission back; its partial uploads are dropped. The reason goes into the trail; it may be empty.
+    ///
+    /// With `expected_revision` nothing is done unless the submission still has that
+    /// [`revision`](crate::SubmissionView::revision); nobody changes it between that check and the withdrawal.
     ///
     /// # Errors
-    /// [`StoreError::Forbidden`], [`StoreError::NotFound`], and what the disk says.
-    pub fn withdraw(&self, actor: &Actor, id: SubmissionId) -> Result<State, StoreError> {
+    /// [`StoreError::Invalid`] for a reason that is too long or has control characters other than line breaks and tabs,
+    /// [`StoreError::RevisionMismatch`], [`StoreError::Forbidden`], [`StoreError::NotFound`], and what the disk says.
+    pub fn withdraw(
+        &self,
+        actor: &Actor,
+        id: SubmissionId,
+        reason: &str,
+        expected_revision: Option<u64>,
+    ) -> Result<State, StoreError> {
         let inner = &self.inner;
+        check_reason(reason)?;
         let _held = inner.keys.take(vec![keylock::submission(id)]);
         let entry = inner.entry(id)?;
+        if let Some(expected) = expected_revision.filter(|expected| *expected != entry.revision) {
+            return Err(StoreError::RevisionMismatch {
+                id,
+                expected,
+                present: entry.revision,
+            });
+        }
         let state = forbid(id, entry.state, Verb::Withdraw)?;
         // A withdrawal lets the same package be submitted anew: it must not run beside such a creation.
         let package = keylock::package(&entry.contributor, &entry.package_digest);
         let _held_package = inner.keys.take(vec![package]);
-        inner.commit(actor, Event::Withdrawn(id))?;
+        let event = Withdrawn {
+            id,
+            reason: reason.to_owned(),
+        };
+        inner.commit(actor, Event::Withdrawn(event))?;
         for (array, stored) in &entry.arrays {
             if !stored {
                 inner.drop_upload(id, &array.name);
@@ -119,39 +171,74 @@ impl Store {
     }
 }
 
+/// A submission that was there before.
+struct Known {
+    receipt: Receipt,
+    /// The request id is bound to it already.
+    by_request: bool,
+}
+
 impl Inner {
     fn known_before(
         &self,
         contributor: &str,
-        new: &NewSubmission,
-    ) -> Result<Option<Receipt>, StoreError> {
+        request_id: &str,
+        package_digest: &Digest,
+    ) -> Result<Option<Known>, StoreError> {
         let core = self.shared.lock();
-        let receipt = |id: SubmissionId| {
+        let known = |id: SubmissionId, by_request: bool| {
             let entry = core.ledger.entry(id).ok_or(StoreError::NotFound(id))?;
-            Ok(Receipt {
+            let receipt = Receipt {
                 id,
                 created: false,
                 state: entry.state,
+            };
+            Ok(Known {
+                receipt,
+                by_request,
             })
         };
-        if let Some(id) = core.ledger.by_request(contributor, &new.request_id) {
+        if let Some(id) = core.ledger.by_request(contributor, request_id) {
             let same = core
                 .ledger
                 .entry(id)
-                .is_some_and(|entry| entry.package_digest == new.package_digest);
+                .is_some_and(|entry| entry.package_digest == *package_digest);
             if !same {
                 return Err(StoreError::RequestConflict {
-                    request_id: new.request_id.clone(),
+                    request_id: request_id.to_owned(),
                     id,
                 });
             }
-            return receipt(id).map(Some);
+            return known(id, true).map(Some);
         }
         core.ledger
-            .by_package(contributor, &new.package_digest)
-            .map(receipt)
+            .by_package(contributor, package_digest)
+            .map(|id| known(id, false))
             .transpose()
     }
+}
+
+fn check_reason(reason: &str) -> Result<(), StoreError> {
+    let mut found = Vec::new();
+    let mut add = |message: String| {
+        found.push(Violation {
+            field: "reason".to_owned(),
+            message,
+        });
+    };
+    if reason.len() > REASON_BYTES_MAX {
+        add(format!("is longer than {REASON_BYTES_MAX} bytes"));
+    }
+    if reason
+        .chars()
+        .any(|c| c.is_control() && !matches!(c, '\n' | '\t'))
+    {
+        add("has control characters other than line breaks and tabs".to_owned());
+    }
+    if found.is_empty() {
+        return Ok(());
+    }
+    Err(StoreError::Invalid(found))
 }
 
 /// State after a verb, or that it is forbidden.

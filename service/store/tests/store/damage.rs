@@ -34,7 +34,7 @@ fn with_last_frame(root: &Path) -> (SubmissionId, PathBuf, usize, Vec<u8>) {
     let before = fs::read(&path).unwrap().len();
     let anchor = fs::read(root.join("anchor")).unwrap();
     let store = open(root);
-    store.withdraw(&mira(), id).unwrap();
+    store.withdraw(&mira(), id, "", None).unwrap();
     drop(store);
     (id, path, before, anchor)
 }
@@ -259,7 +259,7 @@ fn an_index_of_an_older_trail_is_not_trusted() {
     let anchor = fs::read(root.join("anchor")).unwrap();
     let store = open(root);
     let id = store.claim_job().unwrap().id();
-    store.withdraw(&mira(), id).unwrap();
+    store.withdraw(&mira(), id, "", None).unwrap();
     store.close().unwrap();
     drop(store);
     copy(&saved, &root.join("trail"));
@@ -320,7 +320,7 @@ fn temporary_files_are_cleared_and_live_partial_uploads_kept() {
     let id = store.create_submission(&mira(), sample(1, "a")).unwrap().id;
     let gone = store.create_submission(&mira(), sample(2, "b")).unwrap().id;
     store.append_array_part(id, ARRAY, 0, &[0; 10]).unwrap();
-    store.withdraw(&mira(), gone).unwrap();
+    store.withdraw(&mira(), gone, "", None).unwrap();
     drop(store);
     let strays = [
         root.join("temp/00000007"),

@@ -112,7 +112,7 @@ pub(crate) fn day(root: &Path, disk: &SimDisk, journal: &mut Journal) {
     };
     judge(&store, journal, Verdict::Reject, None);
     if let Some(id) = third {
-        journal.note(id, State::Withdrawn, &store.withdraw(&mira(), id));
+        journal.note(id, State::Withdrawn, &store.withdraw(&mira(), id, "", None));
     }
     submit(&store, journal, 4);
     for _ in 0..3 {
@@ -178,7 +178,7 @@ fn a_failed_sync_of_the_trail_stops_all_answers() {
     let id = store.create_submission(&mira(), sample(1, "1")).unwrap().id;
     // A withdrawal writes a frame, then syncs it: the second call from here.
     disk.fail_at(disk.calls() + 2, Fault::Error);
-    let failed = store.withdraw(&mira(), id);
+    let failed = store.withdraw(&mira(), id, "", None);
     assert!(matches!(failed, Err(StoreError::Poisoned(_))), "{failed:?}");
     assert!(matches!(store.health(), Health::Poisoned(_)));
     let later = store.create_submission(&mira(), sample(2, "2"));
@@ -198,7 +198,7 @@ fn no_space_changes_nothing_and_passes() {
         .unwrap();
     for fault in [Fault::NoSpace, Fault::Short] {
         disk.fail_at(disk.calls() + 1, fault);
-        let failed = store.withdraw(&mira(), id);
+        let failed = store.withdraw(&mira(), id, "", None);
         assert!(matches!(failed, Err(StoreError::NoSpace)), "{failed:?}");
         assert_eq!(store.health(), Health::Good);
         assert_eq!(state(&store, id), State::Draft);
@@ -207,7 +207,7 @@ fn no_space_changes_nothing_and_passes() {
         assert!(matches!(part, Err(StoreError::NoSpace)), "{part:?}");
     }
     send(&store, id, 1).unwrap();
-    store.withdraw(&mira(), id).unwrap();
+    store.withdraw(&mira(), id, "", None).unwrap();
     drop(store);
     disk.power_cut(Leave::Nothing);
     let store = Store::open(&root, options_on(Arc::new(disk))).unwrap();

@@ -163,7 +163,7 @@ fn request_ids_and_packages_are_known_again() {
             .unwrap()
             .created
     );
-    store.withdraw(&mira(), first.id).unwrap();
+    store.withdraw(&mira(), first.id, "", None).unwrap();
     let same = store.create_submission(&mira(), sample(1, "a")).unwrap();
     assert_eq!(
         (same.id, same.created, same.state),
@@ -226,7 +226,7 @@ fn the_first_verdict_counts_and_leases_are_volatile() {
         .unwrap();
     assert_eq!((late.state, late.counted), (State::Held, false));
     assert_eq!(store.read_report(first).unwrap(), b"report Hold 0");
-    store.withdraw(&mira(), second).unwrap();
+    store.withdraw(&mira(), second, "", None).unwrap();
     let gone = store
         .complete_examination(&worker(), &other, outcome(Verdict::Accept, 0.0))
         .unwrap();
@@ -346,7 +346,7 @@ fn observers_see_every_state_in_order_and_can_be_read_by_then() {
     }));
     let id = queued(&store, 1, None);
     examine(&store, Verdict::Reject, 0.0);
-    store.withdraw(&mira(), id).unwrap();
+    store.withdraw(&mira(), id, "", None).unwrap();
     store.close().unwrap();
     let states = [
         State::Draft,

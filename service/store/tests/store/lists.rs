@@ -26,7 +26,7 @@ fn submissions_come_newest_first_in_pages_that_fit_together() {
         }
         ids.push(store.create_submission(&mira(), new).unwrap().id);
     }
-    store.withdraw(&mira(), ids[3]).unwrap();
+    store.withdraw(&mira(), ids[3], "", None).unwrap();
     ids.reverse();
     let all = |filter: &SubmissionFilter, size: usize| {
         let mut found = Vec::new();

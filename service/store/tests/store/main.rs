@@ -9,10 +9,13 @@
 
 mod damage;
 mod faults;
+mod fixture;
 mod lifecycle;
 mod lists;
 mod model;
 mod power;
+mod requests;
 mod sim_disk;
 mod support;
 mod uploads;
+mod withdrawals;

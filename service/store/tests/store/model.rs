@@ -49,7 +49,7 @@ struct Known {
     id: SubmissionId,
     who: u8,
     package: u8,
-    request: u8,
+    requests: Vec<u8>,
     stored: bool,
     state: State,
     crashes: u32,
@@ -68,7 +68,7 @@ fn actor(who: u8) -> Actor {
 impl Model {
     /// Index of what a request finds, or that it conflicts.
     fn find(&self, who: u8, package: u8, request: u8) -> Result<Option<usize>, ()> {
-        let by_request = |k: &Known| k.who == who && k.request == request;
+        let by_request = |k: &Known| k.who == who && k.requests.contains(&request);
         if let Some(at) = self.all.iter().position(by_request) {
             return if self.all[at].package == package {
                 Ok(Some(at))
@@ -89,7 +89,8 @@ impl Model {
             Err(()) => assert!(matches!(receipt, Err(StoreError::RequestConflict { .. }))),
             Ok(Some(at)) => {
                 let receipt = receipt.unwrap();
-                let known = &self.all[at];
+                let known = &mut self.all[at];
+                known.requests.push(request);
                 assert_eq!(
                     (receipt.id, receipt.created, receipt.state),
                     (known.id, false, known.state)
@@ -102,7 +103,7 @@ impl Model {
                     id: receipt.id,
                     who,
                     package,
-                    request,
+                    requests: vec![request],
                     stored: false,
                     state: State::Draft,
                     crashes: 0,
@@ -203,7 +204,12 @@ impl Model {
         let Some(known) = self.all.get_mut(which) else {
             return;
         };
-        let done = store.withdraw(&actor(known.who), known.id);
+        let revision = store.get_submission(known.id).unwrap().revision;
+        let stale = store.withdraw(&actor(known.who), known.id, "", Some(revision - 1));
+        assert!(
+            matches!(stale, Err(StoreError::RevisionMismatch { present, .. }) if present == revision)
+        );
+        let done = store.withdraw(&actor(known.who), known.id, "no more", Some(revision));
         if matches!(
             known.state,
             State::Accepted | State::Withdrawn | State::Retired
@@ -236,6 +242,8 @@ impl Model {
             assert_eq!(view.state, known.state);
             assert_eq!(view.arrays[0].stored, known.stored);
             assert_eq!(view.crashed_attempts, known.crashes);
+            let gone = known.state == State::Withdrawn;
+            assert_eq!(view.withdrawal_reason.is_some(), gone);
             by_state.entry(known.state).or_default().push(known.id);
         }
         for state in State::ALL {
