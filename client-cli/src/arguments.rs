@@ -164,7 +164,12 @@ pub struct WithdrawArgs {
     /// The submission: its id, or submissions/ID
     pub id: String,
     /// Why, for the service's log
-    #[arg(long, value_name = "TEXT", default_value = "", hide_default_value = true)]
+    #[arg(
+        long,
+        value_name = "TEXT",
+        default_value = "",
+        hide_default_value = true
+    )]
     pub reason: String,
     /// Where to.
     #[command(flatten)]

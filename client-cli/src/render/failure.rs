@@ -201,8 +201,7 @@ mod tests {
         let mut details =
             ErrorDetails::with_bad_request(vec![FieldViolation::new("name", "32 digits")]);
         details.set_error_info("REQUEST_INVALID", "tarehouse", []);
-        let status =
-            Status::with_error_details(Code::InvalidArgument, "name: 32 digits", details);
+        let status = Status::with_error_details(Code::InvalidArgument, "name: 32 digits", details);
         let text = to_text(&Failure::service("look", status), View::plain(80));
         assert_eq!(text.matches("name: 32 digits").count(), 1, "{text}");
     }

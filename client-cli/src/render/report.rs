@@ -71,7 +71,10 @@ pub fn write_verdict(page: &mut Page, report: &Report) {
     page.hanging(
         "",
         "  ",
-        &format!("{word}{}", words::verdict_sentence(verdict, caution_count(report))),
+        &format!(
+            "{word}{}",
+            words::verdict_sentence(verdict, caution_count(report))
+        ),
     );
     for (k, reason) in report.verdict_reasons.iter().enumerate() {
         let first = format!("{:>3}. ", k + 1);

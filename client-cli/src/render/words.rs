@@ -183,3 +183,29 @@ pub fn cell_protocol(protocol: CellProtocol) -> &'static str {
         CellProtocol::Unspecified => "cells of unknown kind",
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use tarehouse_assay::report::Rule;
+
+    #[test]
+    fn the_name_of_every_rule_moves_behind_its_words() {
+        for rule in Rule::ALL {
+            let text = format!("{}: it leaves 3: too much", rule.name());
+            let expected = format!("it leaves 3: too much (rule {})", rule.name());
+            assert_eq!(reason(&text), expected);
+        }
+    }
+
+    #[test]
+    fn other_reasons_stay_as_they_are() {
+        for text in [
+            "possibly physical soft modes, down to 20.2i cm⁻¹: q = (1/2, 0, 0) fits",
+            "settings.basis is required and is missing",
+            ": nothing",
+        ] {
+            assert_eq!(reason(text), text);
+        }
+    }
+}

@@ -253,7 +253,10 @@ async fn a_rejected_submission_is_taken_back_once_and_an_accepted_one_stays() {
     ] {
         let sent = tarehouse(&["submit", text(&demo_package(package)), "--local", store]).await;
         assert_eq!(sent.exit, exit, "{}", sent.err);
-        let name = json(&sent.out)["submission"]["name"].as_str().unwrap().to_owned();
+        let name = json(&sent.out)["submission"]["name"]
+            .as_str()
+            .unwrap()
+            .to_owned();
         names.push(name);
     }
     let [rejected, accepted] = names.as_slice() else {
@@ -268,7 +271,15 @@ async fn a_rejected_submission_is_taken_back_once_and_an_accepted_one_stays() {
     let refused = tarehouse(&["withdraw", accepted, "--local", store]).await;
     assert_eq!(refused.exit, Exit::Conflict);
     assert!(refused.err.contains("STATE_FORBIDS"), "{}", refused.err);
-    let left = tarehouse(&["list", "submissions", "--state", "accepted", "--local", store]).await;
+    let left = tarehouse(&[
+        "list",
+        "submissions",
+        "--state",
+        "accepted",
+        "--local",
+        store,
+    ])
+    .await;
     assert_eq!(json(&left.out)["submissions"][0]["name"], accepted.as_str());
 }
 
