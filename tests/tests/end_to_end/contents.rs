@@ -4,7 +4,7 @@ use tonic::Code;
 
 use crate::bare::{ARRAY, Bare, Pack, refused};
 
-/// Spoils a `.npy` file without changing its length.
+/// Spoils a `.npy` file.
 type Spoil = fn(&mut Vec<u8>);
 
 /// Replaces text of the header by text of the same length.
@@ -22,7 +22,12 @@ fn at_end(file: &mut [u8], place: usize, value: f64) {
 }
 
 /// The ways to spoil, and what the violation must say.
-const CASES: [(&str, Spoil, &str); 8] = [
+const CASES: [(&str, Spoil, &str); 9] = [
+    (
+        "truncated",
+        |file| file.truncate(file.len() - 24),
+        "truncated",
+    ),
     (
         "not a number",
         |file| at_end(file, 7, f64::NAN),

@@ -180,7 +180,7 @@ async fn declarations(bare: &Bare) {
     for (what, request) in [
         (
             "too small for the shape",
-            changed(0, |array| array.size_bytes -= 100),
+            changed(0, |array| array.size_bytes -= 200),
         ),
         ("nothing", changed(1, |array| array.size_bytes = 0)),
         ("absurd", changed(2, |array| array.size_bytes = u64::MAX)),

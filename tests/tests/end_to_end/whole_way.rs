@@ -181,7 +181,7 @@ async fn watched(house: &House, name: &str) {
 }
 
 /// Every number of the ranking, from the reports: on the grid exactly, between its points by the Taylor series
-/// F(T₀ + d) = F − S d − C_V d²/(2 T₀) of the nearest point below, whose next term is below 1e-4 kJ/mol for d < 10 K.
+/// F(T₀ + d) = F − S d − C_V d²/(2 T₀) of the nearest point, whose next term is below 1e-4 kJ/mol for d < 10 K.
 fn ranking_follows_from_reports(table: &Value, records: &[&str], reports: &[Ended]) {
     const SERIES_KJ_PER_MOL: f64 = 1e-4;
     for (k, &temperature_k) in TEMPERATURES_K.iter().enumerate() {
@@ -218,22 +218,22 @@ fn ranking_follows_from_reports(table: &Value, records: &[&str], reports: &[Ende
 
 fn vibrational(report: &Value, temperature_k: f64) -> f64 {
     let points = report["free_energy"].as_array().unwrap();
-    let below = points
+    let away = |point: &&Value| (number(&point["temperature_k"]) - temperature_k).abs();
+    let nearest = points
         .iter()
-        .filter(|point| number(&point["temperature_k"]) <= temperature_k)
-        .max_by(|a, b| number(&a["temperature_k"]).total_cmp(&number(&b["temperature_k"])))
+        .min_by(|a, b| away(a).total_cmp(&away(b)))
         .unwrap();
-    let from_k = number(&below["temperature_k"]);
+    let from_k = number(&nearest["temperature_k"]);
     let step_k = temperature_k - from_k;
-    assert!(step_k < 10.0 + 1e-9, "the grid is coarser than the series");
-    let slope = number(&below["entropy_j_per_mol_k"]) * 1e-3;
-    let bend = number(&below["heat_capacity_j_per_mol_k"]) * 1e-3;
-    let bending = if step_k > 0.0 {
+    assert!(step_k.abs() < 10.0, "too far for the series");
+    let slope = number(&nearest["entropy_j_per_mol_k"]) * 1e-3;
+    let bend = number(&nearest["heat_capacity_j_per_mol_k"]) * 1e-3;
+    let bending = if from_k > 0.0 {
         bend * step_k * step_k / (2.0 * from_k)
     } else {
         0.0
     };
-    number(&below["central_kj_per_mol"]) - slope * step_k - bending
+    number(&nearest["central_kj_per_mol"]) - slope * step_k - bending
 }
 
 /// Pair symmetry and both translation sums of the projected constants are zero to 1e-10 of the largest self constant;
