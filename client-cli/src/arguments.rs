@@ -67,6 +67,13 @@ pub enum Command {
         tarehouse fetch records/3f2a… --array package.toml --out package.toml"
     )]
     Fetch(FetchArgs),
+    /// Take back a draft, or a submission that waits, was held, rejected or returned.
+    #[command(
+        after_help = "An accepted submission stays; a newer one with the same contributor_key takes its place.\n\n\
+        Examples:\n  tarehouse withdraw 3f2a…\n  \
+        tarehouse withdraw submissions/3f2a… --reason \"wrong unit, a corrected one follows\""
+    )]
+    Withdraw(WithdrawArgs),
     /// Rank the forms of a compound by free energy at chosen temperatures.
     #[command(after_help = "Examples:\n  tarehouse rank \"velnaric acid\"\n  \
         tarehouse rank \"velnaric acid\" --temperature 0,100,300,400\n  \
@@ -143,6 +150,27 @@ pub struct WatchArgs {
     /// Stop waiting after this many seconds
     #[arg(long, value_name = "SECONDS")]
     pub timeout: Option<u64>,
+    /// Where to.
+    #[command(flatten)]
+    pub connect: ConnectArgs,
+    /// How to write.
+    #[command(flatten)]
+    pub format: FormatArgs,
+}
+
+/// Arguments of `withdraw`.
+#[derive(Debug, Args)]
+pub struct WithdrawArgs {
+    /// The submission: its id, or submissions/ID
+    pub id: String,
+    /// Why, for the service's log
+    #[arg(
+        long,
+        value_name = "TEXT",
+        default_value = "",
+        hide_default_value = true
+    )]
+    pub reason: String,
     /// Where to.
     #[command(flatten)]
     pub connect: ConnectArgs,

@@ -51,7 +51,10 @@ pub fn read(folder: &Path) -> Result<CheckedPackage, Failure> {
     }
     let manifest = match read_file(folder, MANIFEST_FILE, MANIFEST_BYTES) {
         Ok(manifest) => manifest,
-        Err(violation) => return Err(invalid(label, vec![violation])),
+        Err(violation) => {
+            let violations = std::iter::once(violation).chain(packages_inside(folder));
+            return Err(invalid(label, violations.collect()));
+        }
     };
     let mut unreadable = BTreeMap::new();
     let mut arrays = BTreeMap::new();
@@ -139,6 +142,22 @@ fn check_with(
             Err(invalid(files.folder, all))
         }
     }
+}
+
+/// What to say of a folder that holds packages and is none.
+fn packages_inside(folder: &Path) -> Option<String> {
+    let mut inside: Vec<String> = fs::read_dir(folder)
+        .ok()?
+        .filter_map(Result::ok)
+        .filter(|entry| entry.path().join(MANIFEST_FILE).is_file())
+        .map(|entry| entry.path().display().to_string())
+        .collect();
+    inside.sort();
+    let first = inside.first()?;
+    let count = inside.len();
+    Some(format!(
+        "but there is one in {count} of its own folders; a package is one of those, such as {first}"
+    ))
 }
 
 fn invalid(folder: String, violations: Vec<String>) -> Failure {
@@ -258,6 +277,13 @@ mod tests {
             panic!("an empty folder was taken");
         };
         assert_eq!(violations, ["package.toml: the file is missing"]);
+        let inner = folder.path().join("form-i");
+        fs::create_dir(&inner).unwrap();
+        fs::write(inner.join("package.toml"), "").unwrap();
+        let Err(Failure::InvalidPackage { violations, .. }) = read(folder.path()) else {
+            panic!("a folder of packages was taken");
+        };
+        assert!(violations[1].ends_with("form-i"), "{violations:?}");
         let file = folder.path().join("package.toml");
         fs::write(&file, "").unwrap();
         assert!(matches!(read(&file), Err(Failure::InvalidPackage { .. })));

@@ -150,11 +150,11 @@ fn verdict(folder: &str, submission: &Submission, report: &Report, view: View) -
         words::verdict_style(submission.verdict()),
         &words::state(submission.state()).to_uppercase(),
     );
-    let reason = match submission.verdict_reasons.first() {
-        Some(reason) => clean(reason).into_owned(),
+    let said = match submission.verdict_reasons.first() {
+        Some(reason) => format!(": {}", words::reason(reason)),
         None => accepted_words(report),
     };
-    page.hanging("  ", "    ", &format!("{word}: {reason}"));
+    page.hanging("  ", "    ", &format!("{word}{said}"));
     let more = submission.verdict_reasons.len().saturating_sub(1);
     if more > 0 {
         page.paragraph(
@@ -172,12 +172,12 @@ fn accepted_words(report: &Report) -> String {
         .iter()
         .filter(|finding| finding.severity() == Severity::Caution);
     match cautions.next() {
-        None => words::verdict_sentence(report.verdict()).to_owned(),
+        None => words::verdict_sentence(report.verdict(), 0),
         Some(first) => format!(
-            "with {}: {}: {}",
+            ", with {}: {} (rule {})",
             counted(1 + cautions.count(), "caution", "cautions"),
-            clean(&first.rule),
-            clean(&first.message)
+            clean(&first.message),
+            clean(&first.rule)
         ),
     }
 }
@@ -245,8 +245,9 @@ fn closing(submissions: &[Submission], kept: Option<&Path>, view: View) -> Strin
         (Some(dir), Some(submission)) => {
             let id = submission.name.trim_start_matches("submissions/");
             let dir = dir.display();
-            page.hanging("", "  ", &format!("Go on: tarehouse report {id} --local {dir}"));
-            page.hanging("", "  ", &format!("       tarehouse list submissions --local {dir}"));
+            page.paragraph(0, "Go on:");
+            page.hanging("  ", "    ", &format!("tarehouse list submissions --local {dir}"));
+            page.hanging("  ", "    ", &format!("tarehouse report {id} --local {dir}"));
         }
         _ => page.paragraph(
             0,

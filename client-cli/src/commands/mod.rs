@@ -8,6 +8,7 @@ pub mod rank;
 pub mod report;
 pub mod submit;
 pub mod watch;
+pub mod withdraw;
 
 use std::sync::{Arc, Mutex, PoisonError};
 
@@ -99,6 +100,7 @@ pub async fn run(command: Command, context: &mut Context<'_>) -> Result<Exit, Fa
         Command::Precheck(args) => precheck::run(args, context).await,
         Command::Submit(args) => submit::run(args, context).await,
         Command::Watch(args) => watch::run(args, context).await,
+        Command::Withdraw(args) => withdraw::run(args, context).await,
         Command::Report(args) => report::run(args, context).await,
         Command::List(args) => list::run(args, context).await,
         Command::Fetch(args) => fetch::run(args, context).await,

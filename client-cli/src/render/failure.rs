@@ -60,13 +60,15 @@ fn status_details(status: &Status) -> Vec<String> {
         None => all.push(message.to_owned()),
     }
     if let Some(request) = rich.bad_request() {
-        all.extend(request.field_violations.iter().map(|violation| {
+        let violations = request.field_violations.iter().map(|violation| {
             if violation.field.is_empty() {
                 violation.description.clone()
             } else {
                 format!("{}: {}", violation.field, violation.description)
             }
-        }));
+        });
+        // A single violation is often the message itself.
+        all.extend(violations.filter(|violation| violation != message));
     }
     if let Some(quota) = rich.quota_failure() {
         all.extend(
@@ -98,8 +100,8 @@ fn code_words(code: Code) -> &'static str {
 fn next_step(failure: &Failure) -> String {
     match failure {
         Failure::Usage { next, .. } | Failure::NotFound { next, .. } => next.clone(),
-        Failure::InvalidPackage { .. } => {
-            "correct what is listed; nothing was sent. `tarehouse precheck FOLDER` looks again.".into()
+        Failure::InvalidPackage { folder, .. } => {
+            format!("correct what is listed; nothing was sent. `tarehouse precheck {folder}` looks again.")
         }
         Failure::File { .. } => "check the path and its permissions.".into(),
         Failure::Policy { .. } => "start from the file deploy/policy.toml of this version.".into(),
@@ -127,6 +129,16 @@ fn service_next(status: &Status) -> String {
         .and_then(|info| info.retry_delay)
     {
         return format!("try again in {} s.", delay.as_secs().max(1));
+    }
+    let details = status.get_error_details();
+    let reason = details.error_info().map_or("", |info| info.reason.as_str());
+    match reason {
+        "COMPOUND_NOT_FOUND" => return "see `tarehouse list compounds` for the names.".to_owned(),
+        "ARRAY_NOT_FOUND" => {
+            return "the manifest names the files: `tarehouse fetch ID --array package.toml --out package.toml`."
+                .to_owned();
+        }
+        _ => {}
     }
     match Exit::from_grpc(status.code()) {
         Exit::Usage => "correct what is listed and run the command again.",
@@ -182,6 +194,30 @@ mod tests {
         let failure = Failure::service("seal submissions/1", status);
         assert!(to_text(&failure, View::plain(60)).contains("try again in 7 s"));
         assert_eq!(failure.exit(), Exit::Unavailable);
+    }
+
+    #[test]
+    fn a_single_violation_that_is_the_message_is_said_once() {
+        let mut details =
+            ErrorDetails::with_bad_request(vec![FieldViolation::new("name", "32 digits")]);
+        details.set_error_info("REQUEST_INVALID", "tarehouse", []);
+        let status = Status::with_error_details(Code::InvalidArgument, "name: 32 digits", details);
+        let text = to_text(&Failure::service("look", status), View::plain(80));
+        assert_eq!(text.matches("name: 32 digits").count(), 1, "{text}");
+    }
+
+    #[test]
+    fn the_next_step_names_a_command_that_helps() {
+        for (reason, command) in [
+            ("COMPOUND_NOT_FOUND", "tarehouse list compounds"),
+            ("ARRAY_NOT_FOUND", "--array package.toml"),
+            ("SUBMISSION_NOT_FOUND", "tarehouse list submissions"),
+        ] {
+            let details = ErrorDetails::with_error_info(reason, "tarehouse", []);
+            let status = Status::with_error_details(Code::NotFound, "none", details);
+            let text = to_text(&Failure::service("look", status), View::plain(100));
+            assert!(text.contains(command), "{text}");
+        }
     }
 
     #[test]

@@ -45,7 +45,7 @@ pub fn records(all: &[Record], view: View) -> String {
         ("symmetry", Kind::Name),
         ("g/cm³", Kind::Number),
         ("static kJ/mol", Kind::Number),
-        ("± at 300 K", Kind::Number),
+        ("± kJ/mol, 300 K", Kind::Number),
         ("cautions", Kind::Number),
         ("record", Kind::Name),
     ]);
@@ -72,7 +72,7 @@ pub fn records(all: &[Record], view: View) -> String {
         "cautions",
         "g/cm³",
         "static kJ/mol",
-        "± at 300 K",
+        "± kJ/mol, 300 K",
         "symmetry",
     ];
     table.drop_until_it_fits(view.width, &droppable);
@@ -115,7 +115,7 @@ pub fn submission(of: &Submission, view: View) -> String {
         page.labelled(2, "record", 10, &clean(&of.record));
     }
     for reason in &of.verdict_reasons {
-        page.labelled(2, "because", 10, &clean(reason));
+        page.labelled(2, "because", 10, &words::reason(reason));
     }
     for array in of
         .arrays
@@ -198,13 +198,13 @@ pub fn summary(outcomes: &[Outcome], view: View) -> String {
 fn main_reason(outcome: &Outcome) -> Option<String> {
     let submission = outcome.submission.as_ref();
     let reasons = submission.map_or(&[][..], |submission| &submission.verdict_reasons);
-    let all = if outcome.problems.is_empty() {
-        reasons
+    let (first, count) = if outcome.problems.is_empty() {
+        (words::reason(reasons.first()?), reasons.len())
     } else {
-        &outcome.problems
+        let first = clean(outcome.problems.first()?).into_owned();
+        (first, outcome.problems.len())
     };
-    let first = clean(all.first()?).into_owned();
-    Some(match all.len() {
+    Some(match count {
         1 => first,
         count => format!("{first} (and {} more)", count - 1),
     })

@@ -71,12 +71,23 @@ pub fn write_verdict(page: &mut Page, report: &Report) {
     page.hanging(
         "",
         "  ",
-        &format!("{word}. {}", words::verdict_sentence(verdict)),
+        &format!(
+            "{word}{}",
+            words::verdict_sentence(verdict, caution_count(report))
+        ),
     );
     for (k, reason) in report.verdict_reasons.iter().enumerate() {
         let first = format!("{:>3}. ", k + 1);
-        page.hanging(&first, "     ", &clean(reason));
+        page.hanging(&first, "     ", &words::reason(reason));
     }
+}
+
+/// How many findings of a report are cautions.
+pub fn caution_count(report: &Report) -> usize {
+    let findings = report.findings.iter();
+    findings
+        .filter(|finding| finding.severity() == Severity::Caution)
+        .count()
 }
 
 fn write_findings(page: &mut Page, findings: &[Finding], show_all: bool) {

@@ -149,7 +149,8 @@ pub fn wrap(text: &str, width: usize, first: &str, rest: &str) -> Vec<String> {
     lines
 }
 
-/// A word cut into pieces of at most `room` columns; words that hold escape sequences stay whole.
+/// A word cut into pieces of at most `room` columns, after a `/` where there is one, as in paths and resource names;
+/// words that hold escape sequences stay whole.
 fn pieces(word: &str, room: usize) -> Vec<String> {
     if visible_width(word) <= room || word.contains('\u{1b}') {
         return vec![word.to_owned()];
@@ -158,7 +159,9 @@ fn pieces(word: &str, room: usize) -> Vec<String> {
     let mut piece = String::new();
     for c in word.chars() {
         if visible_width(&piece) + c.width().unwrap_or(0) > room {
-            all.push(std::mem::take(&mut piece));
+            let after_slash = piece.rfind('/').map_or(piece.len(), |place| place + 1);
+            let rest = piece.split_off(after_slash);
+            all.push(std::mem::replace(&mut piece, rest));
         }
         piece.push(c);
     }
@@ -222,9 +225,18 @@ impl Page {
         }
     }
 
-    /// A label with wrapped text beside it.
+    /// A label with wrapped text beside it; below it where a word would have to be cut beside it and not there.
     pub fn labelled(&mut self, indent: usize, label: &str, label_width: usize, text: &str) {
         let label = self.view.paint(Style::Quiet, label);
+        let longest = text.split_whitespace().map(visible_width).max();
+        let longest = longest.unwrap_or_default();
+        if longest > self.view.width.saturating_sub(indent + label_width + 1)
+            && longest <= self.view.width.saturating_sub(indent + 2)
+        {
+            self.line(&format!("{}{label}", " ".repeat(indent)));
+            self.paragraph(indent + 2, text);
+            return;
+        }
         let first = format!("{}{} ", " ".repeat(indent), pad_right(&label, label_width));
         let rest = " ".repeat(indent + label_width + 1);
         self.hanging(&first, &rest, text);
@@ -239,6 +251,22 @@ impl Page {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn an_id_stays_in_one_piece_where_it_can() {
+        let id = "5dc91dcf617f4cf8997a840489d97365";
+        let mut page = Page::new(View::plain(40));
+        page.labelled(0, "submission", 10, id);
+        page.paragraph(0, &format!("submissions/{id}"));
+        let text = page.finish();
+        let expected = format!("submission\n  {id}\nsubmissions/\n{id}\n");
+        assert_eq!(text, expected);
+        assert_eq!(
+            pieces("/packages/of/form-ii", 13),
+            ["/packages/of/", "form-ii"]
+        );
+        assert_eq!(pieces("a/bbbbbbbb", 4), ["a/", "bbbb", "bbbb"]);
+    }
 
     #[test]
     fn wrapping_keeps_every_word_and_the_width() {

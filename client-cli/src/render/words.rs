@@ -4,7 +4,8 @@ use tarehouse_proto::v1::{
     CellProtocol, LikelyCause, Severity, SoftModeTag, State, Strength, Verdict,
 };
 
-use super::text::{Style, View};
+use super::numbers::counted;
+use super::text::{Style, View, clean};
 
 /// A verdict in one word.
 pub fn verdict(verdict: Verdict) -> &'static str {
@@ -16,14 +17,35 @@ pub fn verdict(verdict: Verdict) -> &'static str {
     }
 }
 
-/// What a verdict means, as a sentence.
-pub fn verdict_sentence(verdict: Verdict) -> &'static str {
+/// What a verdict means, to stand right after its word.
+pub fn verdict_sentence(verdict: Verdict, caution_count: usize) -> String {
     match verdict {
-        Verdict::Accept => "Balanced: it can be stored and ranked.",
-        Verdict::Hold => "It needs the eye of a curator before it can be ranked.",
-        Verdict::Reject => "It cannot be stored as it is.",
-        Verdict::Unspecified => "It has not been examined.",
+        Verdict::Accept if caution_count == 0 => {
+            ". Every check passes; it can be stored and ranked.".to_owned()
+        }
+        Verdict::Accept => format!(
+            ", with {}. It can be stored and ranked; read what is below before you rely on it.",
+            counted(caution_count, "caution", "cautions")
+        ),
+        Verdict::Hold => ". A curator has to look at it before it can be ranked.".to_owned(),
+        Verdict::Reject => ". It cannot be ranked as it is.".to_owned(),
+        Verdict::Unspecified => ". It has not been examined.".to_owned(),
     }
+}
+
+/// A reason of a verdict as a sentence: a rule's name at its head moves to the end, so that the words come first.
+pub fn reason(text: &str) -> String {
+    let text = clean(text);
+    match text.split_once(": ") {
+        Some((rule, said)) if is_rule_name(rule) => format!("{said} (rule {rule})"),
+        _ => text.into_owned(),
+    }
+}
+
+/// Whether a word is kebab-case, as the names of rules are.
+fn is_rule_name(word: &str) -> bool {
+    let is_part = |part: &str| !part.is_empty() && part.bytes().all(|c| c.is_ascii_lowercase());
+    word.split('-').all(is_part)
 }
 
 /// Style of a verdict.
@@ -159,5 +181,31 @@ pub fn cell_protocol(protocol: CellProtocol) -> &'static str {
         CellProtocol::Expanded => "expanded cells",
         CellProtocol::Other => "cells of another kind",
         CellProtocol::Unspecified => "cells of unknown kind",
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use tarehouse_assay::report::Rule;
+
+    #[test]
+    fn the_name_of_every_rule_moves_behind_its_words() {
+        for rule in Rule::ALL {
+            let text = format!("{}: it leaves 3: too much", rule.name());
+            let expected = format!("it leaves 3: too much (rule {})", rule.name());
+            assert_eq!(reason(&text), expected);
+        }
+    }
+
+    #[test]
+    fn other_reasons_stay_as_they_are() {
+        for text in [
+            "possibly physical soft modes, down to 20.2i cm⁻¹: q = (1/2, 0, 0) fits",
+            "settings.basis is required and is missing",
+            ": nothing",
+        ] {
+            assert_eq!(reason(text), text);
+        }
     }
 }

@@ -242,6 +242,48 @@ async fn an_interrupted_submit_says_how_to_go_on_and_its_work_survives() {
 }
 
 #[tokio::test(flavor = "multi_thread")]
+async fn a_rejected_submission_is_taken_back_once_and_an_accepted_one_stays() {
+    let folder = tempfile::tempdir().unwrap();
+    let store = folder.path().join("store");
+    let store = text(&store);
+    let mut names = Vec::new();
+    for (package, exit) in [
+        ("pelquonol-alpha-unit", Exit::Rejected),
+        ("pelquonol-alpha", Exit::Done),
+    ] {
+        let sent = tarehouse(&["submit", text(&demo_package(package)), "--local", store]).await;
+        assert_eq!(sent.exit, exit, "{}", sent.err);
+        let name = json(&sent.out)["submission"]["name"]
+            .as_str()
+            .unwrap()
+            .to_owned();
+        names.push(name);
+    }
+    let [rejected, accepted] = names.as_slice() else {
+        panic!("two were sent");
+    };
+    let id = rejected.trim_start_matches("submissions/");
+    let words = ["withdraw", id, "--reason", "wrong unit", "--local", store];
+    let withdrawn = tarehouse(&words).await;
+    assert_eq!(withdrawn.exit, Exit::Done, "{}", withdrawn.err);
+    assert_eq!(json(&withdrawn.out)["state"], "STATE_WITHDRAWN");
+    assert_eq!(tarehouse(&words).await.exit, Exit::Conflict, "only once");
+    let refused = tarehouse(&["withdraw", accepted, "--local", store]).await;
+    assert_eq!(refused.exit, Exit::Conflict);
+    assert!(refused.err.contains("STATE_FORBIDS"), "{}", refused.err);
+    let left = tarehouse(&[
+        "list",
+        "submissions",
+        "--state",
+        "accepted",
+        "--local",
+        store,
+    ])
+    .await;
+    assert_eq!(json(&left.out)["submissions"][0]["name"], accepted.as_str());
+}
+
+#[tokio::test(flavor = "multi_thread")]
 async fn reading_makes_no_store() {
     let folder = tempfile::tempdir().unwrap();
     let store = folder.path().join("no-such-store");
@@ -250,6 +292,7 @@ async fn reading_makes_no_store() {
         &["rank", "drosmelide"],
         &["report", "1"],
         &["watch", "1"],
+        &["withdraw", "1"],
         &["fetch", "1", "--out", "never-written"],
     ] {
         let words = [words, &["--local", text(&store)]].concat();

@@ -250,6 +250,16 @@ fn a_clean_accept_is_short_and_a_rejected_number_is_marked() {
             "Soft modes: none",
         ],
     );
+    assert!(text.contains("Every check passes"), "{text}");
+    let mut with_cautions = accepted.clone();
+    with_cautions.findings.push(finding(
+        "translation-sum",
+        Severity::Caution,
+        LikelyCause::Unspecified,
+    ));
+    let text = shown(&with_cautions, false, 80);
+    assert!(text.contains("ACCEPTED, with 1 caution."), "{text}");
+    assert!(!text.contains("Every check passes"));
     assert!(!text.contains("rejected upload"));
     let mut rejected = report();
     rejected.set_verdict(Verdict::Reject);
