@@ -6,7 +6,7 @@
 //! as references.
 
 pub mod closed_forms;
-pub mod large_package;
 pub mod judgement;
+pub mod large_package;
 pub mod models;
 pub mod quadrature;
