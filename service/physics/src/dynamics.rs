@@ -261,11 +261,11 @@ impl Dynamics {
                 }
                 let offset = TAU * q.dot(&(positions[j] - positions[i]));
                 let scale = self.inverse_sqrt_masses[i] * self.inverse_sqrt_masses[j];
-                let common = c64::new(offset.cos(), offset.sin());
+                let common = c64::new(offset.cos(), offset.sin()) * scale;
                 for a in 0..3 {
                     for b in 0..3 {
                         let element = &mut matrix[((3 * row + a) * n + j) * 3 + b];
-                        *element = (*element + sum[a][b] * common) * scale;
+                        *element = *element * scale + sum[a][b] * common;
                     }
                 }
             }
