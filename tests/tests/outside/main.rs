@@ -20,6 +20,8 @@ mod metals;
 #[cfg(test)]
 mod oscillator;
 #[cfg(test)]
+mod polar;
+#[cfg(test)]
 mod real_packages;
 #[cfg(test)]
 mod reference;
