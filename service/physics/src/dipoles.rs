@@ -43,10 +43,12 @@ pub struct Dipoles {
     lattice: Vec<Vector3<f64>>,
     /// For pairs i ≤ j in lexical order: entries first..next of `entries`.
     first: Vec<usize>,
-    /// (index in `lattice`, short-range tensor).
-    entries: Vec<(u32, Matrix3<f64>)>,
+    entries: Vec<Entry>,
     self_terms: Vec<Matrix3<f64>>,
 }
+
+/// A place in the list of lattice vectors, and the short-range tensor there.
+type Entry = (u32, Matrix3<f64>);
 
 /// Real-space tensors kept, at most about this many: memory, bounded by a wider reciprocal sum.
 const ENTRIES_MAX: f64 = 1e6;
@@ -79,7 +81,7 @@ impl Dipoles {
         let widest = wrapped.iter().map(Vector3::norm).fold(0.0, f64::max);
         let lattice = ewald.lattice_vectors(2.0 * widest);
         let n = wrapped.len();
-        let rows: Vec<Vec<Vec<(u32, Matrix3<f64>)>>> = (0..n)
+        let rows: Vec<Vec<Vec<Entry>>> = (0..n)
             .into_par_iter()
             .map(|i| {
                 let pair = |j: usize| tensors(&ewald, &lattice, &(wrapped[j] - wrapped[i]));
@@ -241,7 +243,7 @@ impl Dipoles {
     }
 
     /// Real-space entries of a pair i ≤ j.
-    fn pair(&self, i: usize, j: usize) -> &[(u32, Matrix3<f64>)] {
+    fn pair(&self, i: usize, j: usize) -> &[Entry] {
         let n = self.atom_count();
         let index = i * (2 * n + 1 - i) / 2 + j - i;
         &self.entries[self.first[index]..self.first[index + 1]]
@@ -261,11 +263,7 @@ impl Dipoles {
     }
 }
 
-fn tensors(
-    ewald: &Ewald,
-    lattice: &[Vector3<f64>],
-    separation: &Vector3<f64>,
-) -> Vec<(u32, Matrix3<f64>)> {
+fn tensors(ewald: &Ewald, lattice: &[Vector3<f64>], separation: &Vector3<f64>) -> Vec<Entry> {
     (0_u32..)
         .zip(lattice)
         .filter_map(|(index, r)| Some((index, ewald.short_range(&(separation + r))?)))
