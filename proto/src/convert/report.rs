@@ -1,8 +1,8 @@
 //! The report.
 
 use tarehouse_assay::report::{
-    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, Mesh, Noise, Remedy, Report, SoftMode,
-    TruncationChange,
+    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, Mesh, Noise, PolarModes, Remedy,
+    Report, SoftMode, TruncationChange,
 };
 use tarehouse_assay::submission::Digest;
 
@@ -96,7 +96,7 @@ impl TryFrom<v1::Report> for Report {
             noise: report.noise.ok_or(missing("noise"))?.try_into()?,
             soft_modes: each(report.soft_modes)?,
             mesh: report.mesh.ok_or(missing("mesh"))?.try_into()?,
-            crystal: report.crystal.ok_or(missing("crystal"))?.into(),
+            crystal: report.crystal.ok_or(missing("crystal"))?.try_into()?,
             zero_point_energy_kj_per_mol: report.zero_point_energy_kj_per_mol,
             free_energy: every(report.free_energy),
             curves: report.curves.ok_or(missing("curves"))?.into(),
@@ -268,19 +268,66 @@ macro_rules! alike {
 }
 
 alike! { TruncationChange { fraction, wavenumber_per_cm, } }
-alike! { CrystalFacts {
-    space_group_number,
-    space_group_symbol,
-    volume_per_formula_unit_ang3,
-    density_g_per_cm3,
-    molecule_count,
-    sound_velocity_min_m_per_s,
-    sound_velocity_max_m_per_s,
-    projection_relative_norm,
-    projection_largest_ev_per_ang2,
-    projection_free_energy_kj_per_mol,
-    lattice_energy_kj_per_mol,
-} }
+impl From<CrystalFacts> for v1::CrystalFacts {
+    fn from(facts: CrystalFacts) -> Self {
+        Self {
+            space_group_number: facts.space_group_number,
+            space_group_symbol: facts.space_group_symbol,
+            volume_per_formula_unit_ang3: facts.volume_per_formula_unit_ang3,
+            density_g_per_cm3: facts.density_g_per_cm3,
+            molecule_count: facts.molecule_count,
+            sound_velocity_min_m_per_s: facts.sound_velocity_min_m_per_s,
+            sound_velocity_max_m_per_s: facts.sound_velocity_max_m_per_s,
+            projection_relative_norm: facts.projection_relative_norm,
+            projection_largest_ev_per_ang2: facts.projection_largest_ev_per_ang2,
+            projection_free_energy_kj_per_mol: facts.projection_free_energy_kj_per_mol,
+            lattice_energy_kj_per_mol: facts.lattice_energy_kj_per_mol,
+            polar_modes: every(facts.polar_modes),
+        }
+    }
+}
+
+impl TryFrom<v1::CrystalFacts> for CrystalFacts {
+    type Error = ConvertError;
+
+    fn try_from(facts: v1::CrystalFacts) -> Result<Self, ConvertError> {
+        Ok(Self {
+            space_group_number: facts.space_group_number,
+            space_group_symbol: facts.space_group_symbol,
+            volume_per_formula_unit_ang3: facts.volume_per_formula_unit_ang3,
+            density_g_per_cm3: facts.density_g_per_cm3,
+            molecule_count: facts.molecule_count,
+            sound_velocity_min_m_per_s: facts.sound_velocity_min_m_per_s,
+            sound_velocity_max_m_per_s: facts.sound_velocity_max_m_per_s,
+            projection_relative_norm: facts.projection_relative_norm,
+            projection_largest_ev_per_ang2: facts.projection_largest_ev_per_ang2,
+            projection_free_energy_kj_per_mol: facts.projection_free_energy_kj_per_mol,
+            lattice_energy_kj_per_mol: facts.lattice_energy_kj_per_mol,
+            polar_modes: each(facts.polar_modes)?,
+        })
+    }
+}
+
+impl From<PolarModes> for v1::PolarModes {
+    fn from(modes: PolarModes) -> Self {
+        Self {
+            direction: modes.direction.to_vec(),
+            wavenumbers_per_cm: modes.wavenumbers_per_cm,
+        }
+    }
+}
+
+impl TryFrom<v1::PolarModes> for PolarModes {
+    type Error = ConvertError;
+
+    fn try_from(modes: v1::PolarModes) -> Result<Self, ConvertError> {
+        Ok(Self {
+            direction: triple("direction", modes.direction)?,
+            wavenumbers_per_cm: modes.wavenumbers_per_cm,
+        })
+    }
+}
+
 alike! { FreeEnergy {
     temperature_k,
     defined,

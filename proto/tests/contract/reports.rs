@@ -5,8 +5,8 @@ use proptest::option;
 use proptest::prelude::*;
 use prost::Message as _;
 use tarehouse_assay::report::{
-    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, Mesh, Noise, Remedy,
-    Report, Rule, Severity, SoftMode, Strength, Tag, TruncationChange, Verdict,
+    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, Mesh, Noise, PolarModes,
+    Remedy, Report, Rule, Severity, SoftMode, Strength, Tag, TruncationChange, Verdict,
 };
 use tarehouse_proto::convert::ConvertError;
 use tarehouse_proto::v1;
@@ -119,6 +119,10 @@ fn facts() -> impl Strategy<Value = CrystalFacts> {
             projection_largest_ev_per_ang2: x[3],
             projection_free_energy_kj_per_mol: y[2],
             lattice_energy_kj_per_mol: x[4],
+            polar_modes: vec![PolarModes {
+                direction: [x[0], x[1], x[2]],
+                wavenumbers_per_cm: x.clone(),
+            }],
         }
     })
 }

@@ -30,6 +30,7 @@ pub(crate) fn facts(
         projection_free_energy_kj_per_mol: projection_free_energy(workup, spectra, energies),
         lattice_energy_kj_per_mol: workup.submission.energy.lattice_energy_ev * EV_TO_KJ_PER_MOL
             / units,
+        polar_modes: crate::polar::modes_by_direction(workup),
     }
 }
 

@@ -6,6 +6,7 @@ mod effective;
 mod facts;
 mod free_energy;
 mod noise;
+mod polar;
 pub mod policy;
 mod remedies;
 pub mod report;
@@ -98,7 +99,7 @@ pub fn examine(
     )?);
     findings.extend(checks::settings::check(&workup));
     findings.extend(checks::claims::check(&workup, &free_energy));
-    findings.push(checks::long_range::check(&workup));
+    findings.extend(checks::long_range::check(&workup));
     findings.push(verdict::soft_mode_finding(&soft_modes));
     findings.push(verdict::bracket_finding(&workup, width));
     let (verdict, verdict_reasons) = verdict::decide(&workup, &findings, &soft_modes, width);

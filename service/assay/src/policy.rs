@@ -34,6 +34,8 @@ pub struct Limits {
     pub acoustic: AcousticLimits,
     /// Decay and truncation.
     pub reach: ReachLimits,
+    /// Effective charges.
+    pub charges: ChargeLimits,
     /// The q-mesh.
     pub mesh: MeshLimits,
     /// Soft modes.
@@ -156,6 +158,16 @@ limits! {
         truncation_caution_per_cm: f64,
         /// Which of the fractions is judged.
         truncation_judged_fraction: f64,
+    }
+}
+
+limits! {
+    /// `[charges]`
+    ChargeLimits {
+        /// |Σ Z| over Σ |Z|.
+        neutrality_caution: f64,
+        /// |Σ Z| over Σ |Z|.
+        neutrality_fail: f64,
     }
 }
 

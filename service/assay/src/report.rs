@@ -194,6 +194,8 @@ named_enum! {
         BracketWidth = "bracket-width",
         /// The examination did not finish.
         ExaminationFailed = "examination-failed",
+        /// Effective charges sum to zero.
+        ChargeNeutrality = "charge-neutrality",
     }
 }
 
@@ -368,6 +370,17 @@ pub struct CrystalFacts {
     pub projection_free_energy_kj_per_mol: Option<f64>,
     /// Static lattice energy, kJ/mol per formula unit.
     pub lattice_energy_kj_per_mol: f64,
+    /// Optical modes at Γ by direction, along a*, b* and c*; empty where no dipole–dipole part is set apart.
+    pub polar_modes: Vec<PolarModes>,
+}
+
+/// Optical modes at Γ of a polar crystal, reached along one direction: longitudinal and transverse ones split.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct PolarModes {
+    /// Direction, fractional reciprocal coordinates.
+    pub direction: [f64; 3],
+    /// The 3n − 3 wavenumbers, ascending, cm⁻¹.
+    pub wavenumbers_per_cm: Vec<f64>,
 }
 
 /// Free energy at one temperature.

@@ -14,6 +14,7 @@ use tarehouse_physics::{Crystal, ForceConstants};
 
 use crate::ExamineError;
 use crate::noise::NoiseModel;
+use crate::polar::{Polar, with_dipoles};
 use crate::policy::Limits;
 use crate::submission::Submission;
 
@@ -31,6 +32,8 @@ pub(crate) struct Workup<'a> {
     pub(crate) molecules: Molecules,
     /// After T, Q and G.
     pub(crate) projected: ForceConstants,
+    /// Where effective charges are given.
+    pub(crate) polar: Option<Polar>,
     pub(crate) dynamics: Dynamics,
     pub(crate) raw_dynamics: Dynamics,
     pub(crate) acoustic: AcousticMatrix,
@@ -103,8 +106,11 @@ impl<'a> Workup<'a> {
         let images = PairImages::find(&crystal, supercell, tie_tolerance);
         let molecules = Molecules::find(&crystal, limits.structure.bond_tolerance_angstrom);
         let projected = projected(constants, &group);
+        let polar = Polar::new(submission, &crystal, &group);
         let dynamics = dynamics_of(&crystal, &projected, &images, &group);
+        let dynamics = with_dipoles(polar.as_ref(), dynamics);
         let raw_dynamics = Dynamics::new(&crystal, constants, &images);
+        let raw_dynamics = with_dipoles(polar.as_ref(), raw_dynamics);
         let acoustic = AcousticMatrix::new(&dynamics).map_err(eigen_error("long-wave limit"))?;
         let mesh = QMesh::standard(
             &crystal,
@@ -125,6 +131,7 @@ impl<'a> Workup<'a> {
             images,
             molecules,
             projected,
+            polar,
             dynamics,
             raw_dynamics,
             acoustic,
@@ -163,7 +170,8 @@ impl<'a> Workup<'a> {
 
     /// Dynamics of other constants of the same crystal, in real form where the projected ones have one.
     pub(crate) fn dynamics_of(&self, constants: &ForceConstants) -> Dynamics {
-        dynamics_of(&self.crystal, constants, &self.images, &self.group)
+        let dynamics = dynamics_of(&self.crystal, constants, &self.images, &self.group);
+        with_dipoles(self.polar.as_ref(), dynamics)
     }
 }
 

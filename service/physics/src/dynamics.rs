@@ -13,14 +13,16 @@ mod matrix_form;
 mod phases;
 
 use std::f64::consts::TAU;
-use std::sync::OnceLock;
+use std::sync::{Arc, OnceLock};
 
 use nalgebra::{Matrix3, Vector3};
 use tarehouse_eigensolver::{Eigen, EigenError, c64, hermitian_eigen, symmetric_eigen};
 
 use crate::crystal::Crystal;
+use crate::dipoles::Dipoles;
 use crate::force_constants::ForceConstants;
 use crate::images::{ImageShares, PairImages};
+use crate::projection::translation_free;
 use crate::symmetry::Operation;
 use inversion::InversionBasis;
 pub use matrix_form::MatrixForm;
@@ -60,7 +62,9 @@ impl Modes {
 #[derive(Debug, Clone)]
 pub struct Dynamics {
     crystal: Crystal,
+    /// What is interpolated: all constants, or the short-range part where dipoles are set apart.
     constants: ForceConstants,
+    dipoles: Option<Arc<Dipoles>>,
     images: PairImages,
     inverse_sqrt_masses: Vec<f64>,
     inversion: Option<InversionBasis>,
@@ -74,6 +78,7 @@ impl Dynamics {
         Self {
             crystal: crystal.clone(),
             constants: constants.clone(),
+            dipoles: None,
             images: images.clone(),
             inverse_sqrt_masses: crystal
                 .masses_u()
@@ -104,7 +109,36 @@ impl Dynamics {
         &self.crystal
     }
 
-    /// The constants.
+    /// The same with the dipole–dipole part set apart: it is taken out of the constants as far as it is folded into their
+    /// supercell, and added to D(q) in full (Gonze & Lee, Phys. Rev. B 55, 10355 (1997)). Commensurate q stay exact.
+    /// `folded` must be [`Dipoles::folded`] for the supercell of the constants, and the atoms the same.
+    #[must_use]
+    pub fn separating(mut self, dipoles: &Arc<Dipoles>, folded: &ForceConstants) -> Self {
+        let parts = folded.blocks();
+        self.constants = self.constants.map_blocks(|flat, block| block - parts[flat]);
+        self.dipoles = Some(Arc::clone(dipoles));
+        self
+    }
+
+    /// The same with the dipole–dipole part added to constants that lack it. Arguments as in [`Dynamics::separating`].
+    #[must_use]
+    pub fn adding(mut self, dipoles: &Arc<Dipoles>, folded: &ForceConstants) -> Self {
+        // The sum is the translation-free dipole part; what its own self terms leave is spread over the constants.
+        let (parts, closed) = (folded.blocks(), translation_free(folded));
+        let closed = closed.blocks();
+        self.constants = self
+            .constants
+            .map_blocks(|flat, block| block + closed[flat] - parts[flat]);
+        self.dipoles = Some(Arc::clone(dipoles));
+        self
+    }
+
+    /// The dipole–dipole part that is set apart.
+    pub fn dipoles(&self) -> Option<&Dipoles> {
+        self.dipoles.as_deref()
+    }
+
+    /// The constants that are interpolated: without the dipole–dipole part where that is set apart.
     pub fn constants(&self) -> &ForceConstants {
         &self.constants
     }
@@ -211,7 +245,10 @@ impl Dynamics {
             ),
         };
         let phases = Phases::new(q);
-        let mut matrix = vec![c64::new(0.0, 0.0); 9 * rows.len() * n];
+        let mut matrix = match &self.dipoles {
+            Some(dipoles) => dipoles.rows(q, rows),
+            None => vec![c64::new(0.0, 0.0); 9 * rows.len() * n],
+        };
         for (row, &i) in rows.iter().enumerate() {
             for j in 0..n {
                 let mut sum = [[c64::new(0.0, 0.0); 3]; 3];
@@ -227,7 +264,8 @@ impl Dynamics {
                 let common = c64::new(offset.cos(), offset.sin()) * scale;
                 for a in 0..3 {
                     for b in 0..3 {
-                        matrix[((3 * row + a) * n + j) * 3 + b] = sum[a][b] * common;
+                        let element = &mut matrix[((3 * row + a) * n + j) * 3 + b];
+                        *element = *element * scale + sum[a][b] * common;
                     }
                 }
             }

@@ -218,6 +218,23 @@ impl ForceConstants {
         self.with_blocks(blocks)
     }
 
+    /// Constants of a supercell from blocks of this crate's own making: the right number of them, all finite.
+    pub(crate) fn of_blocks(
+        supercell: &Supercell,
+        atom_count: usize,
+        blocks: Vec<Matrix3<f64>>,
+    ) -> Self {
+        debug_assert_eq!(
+            blocks.len(),
+            supercell.cell_count() * atom_count * atom_count
+        );
+        Self {
+            supercell: supercell.clone(),
+            atom_count,
+            blocks,
+        }
+    }
+
     /// Constants of the same crystal and supercell with other values. Values must be finite.
     pub(crate) fn with_blocks(&self, blocks: Vec<Matrix3<f64>>) -> Self {
         debug_assert_eq!(blocks.len(), self.blocks.len());

@@ -5,8 +5,10 @@
 
 pub mod crystal;
 pub mod density_of_states;
+pub mod dipoles;
 pub mod dynamics;
 pub mod elements;
+pub mod ewald;
 pub mod force_constants;
 pub mod gamma_point;
 pub mod images;

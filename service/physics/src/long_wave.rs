@@ -6,11 +6,17 @@
 //! vectors of the atom-phase form) and D_o⁺ the pseudo-inverse of D(Γ) on the optical space (second-order
 //! perturbation theory; Born & Huang 1954, § 26). K is complete where Uᵀ D1_c U = 0, which T, Q and an inversion, or the
 //! rotation sum, ensure; otherwise λ has a term linear in q, whose size is reported.
+//!
+//! In a polar crystal D1 and D2 hold the analytic dipole–dipole part, and D_o becomes D_o + N_A(q̂), which depends on the
+//! direction; see [`crate::long_wave::field`].
+
+pub mod field;
 
 use nalgebra::{DMatrix, Matrix3, SymmetricEigen, Vector3};
 use tarehouse_eigensolver::{EigenError, c64, symmetric_eigen};
 
 use crate::dynamics::{Dynamics, Modes};
+use field::FieldCoupling;
 
 /// The acoustic matrix as a quadratic form in q.
 #[derive(Debug, Clone, PartialEq)]
@@ -20,6 +26,7 @@ pub struct AcousticMatrix {
     /// Largest |Uᵀ D1_c U|, eV/Å/u: zero where K is complete.
     pub linear_term: f64,
     optical: OpticalSpace,
+    field: Option<FieldCoupling>,
 }
 
 /// Optical eigenvalues below this share of the largest are left out of the pseudo-inverse, eV/Å²/u relative: a free
@@ -55,10 +62,19 @@ impl AcousticMatrix {
                 (k + k.transpose()) * 0.5
             })
         });
+        let field = dynamics.dipoles().map(|dipoles| {
+            let charges = field::mass_weighted(dipoles, dynamics.crystal().masses_u());
+            let mode_charges = optical.coordinates(&charges);
+            let coupling =
+                std::array::from_fn(|c| optical.weighted_product(&reduced[c], &mode_charges));
+            let susceptibility = optical.weighted_product(&mode_charges, &mode_charges);
+            FieldCoupling::new(dipoles, mode_charges, coupling, &susceptibility)
+        });
         Ok(Self {
             stiffness,
             linear_term,
             optical,
+            field,
         })
     }
 
@@ -70,7 +86,10 @@ impl AcousticMatrix {
                 sum += self.stiffness[c][d] * (q[c] * q[d]);
             }
         }
-        sum
+        match &self.field {
+            Some(field) => sum + field.stiffening(q),
+            None => sum,
+        }
     }
 
     /// The three acoustic eigenvalues ω² at a small Cartesian wave vector, ascending, eV/Å²/u.
@@ -100,7 +119,21 @@ impl AcousticMatrix {
         (traces.sum::<f64>() / 9.0).max(f64::MIN_POSITIVE)
     }
 
-    /// The 3n − 3 optical modes at Γ: those orthogonal to the rigid translations.
+    /// What the macroscopic field does in a polar crystal; `None` where no dipoles are set apart.
+    pub fn field(&self) -> Option<&FieldCoupling> {
+        self.field.as_ref()
+    }
+
+    /// Eigenvalues of the optical modes at Γ reached along a Cartesian direction, ascending, eV/Å²/u: those of
+    /// D_o + N_A(q̂) where dipoles are set apart.
+    pub fn optical_along(&self, direction: &Vector3<f64>) -> Vec<f64> {
+        match &self.field {
+            Some(field) => field.optical_along(&self.optical.values, direction),
+            None => self.optical.values.clone(),
+        }
+    }
+
+    /// The 3n − 3 optical modes at Γ, without the term of the direction: those orthogonal to the rigid translations.
     pub fn optical_modes(&self) -> Modes {
         let vectors = self
             .optical
@@ -114,7 +147,7 @@ impl AcousticMatrix {
         }
     }
 
-    /// K_cd,ab for elastic constants: mass density times K is the stiffness of long waves; eV/u.
+    /// K_cd,ab for elastic constants: mass density times K is the stiffness of long waves at zero macroscopic field; eV/u.
     pub fn stiffness(&self) -> &[[Matrix3<f64>; 3]; 3] {
         &self.stiffness
     }
@@ -142,9 +175,17 @@ impl Moments {
     fn new(dynamics: &Dynamics, rigid: &DMatrix<f64>) -> Self {
         let (crystal, constants) = (dynamics.crystal(), dynamics.constants());
         let n = crystal.atom_count();
-        let mut first = std::array::from_fn(|_| DMatrix::zeros(3 * n, 3));
-        let mut second = [[Matrix3::zeros(); 3]; 3];
         let masses = crystal.masses_u();
+        let (mut first, mut second) = match dynamics.dipoles() {
+            Some(dipoles) => {
+                let moments = dipoles.moments(masses);
+                (moments.first, moments.second)
+            }
+            None => (
+                std::array::from_fn(|_| DMatrix::zeros(3 * n, 3)),
+                [[Matrix3::zeros(); 3]; 3],
+            ),
+        };
         for cell in 0..constants.supercell().cell_count() {
             for i in 0..n {
                 for j in 0..n {

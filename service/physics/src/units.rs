@@ -26,6 +26,8 @@ pub const BOLTZMANN_EV_PER_K: f64 = BOLTZMANN_J_PER_K / ELEMENTARY_CHARGE_C;
 pub const BOHR_ANGSTROM: f64 = BOHR_M * 1e10;
 /// Hartree energy, eV.
 pub const HARTREE_EV: f64 = HARTREE_J / ELEMENTARY_CHARGE_C;
+/// e²/4πε₀ = E_h a₀, eV·Å.
+pub const COULOMB_EV_ANGSTROM: f64 = HARTREE_EV * BOHR_ANGSTROM;
 /// One eV per particle in kJ/mol (exact).
 pub const EV_TO_KJ_PER_MOL: f64 = ELEMENTARY_CHARGE_C * AVOGADRO_PER_MOL * 1e-3;
 /// One eV as a wavenumber, cm⁻¹ (exact).

@@ -24,6 +24,8 @@ mod metals;
 #[cfg(test)]
 mod oscillator;
 #[cfg(test)]
+mod polar;
+#[cfg(test)]
 mod projections;
 #[cfg(test)]
 mod real_packages;
