@@ -1,7 +1,8 @@
 //! The report.
 
 use tarehouse_assay::report::{
-    CrystalFacts, Curves, Finding, FreeEnergy, Mesh, Noise, Report, SoftMode, TruncationChange,
+    CrystalFacts, Curves, Finding, FreeEnergy, LowestBranch, Mesh, Noise, Report, SoftMode,
+    TruncationChange,
 };
 use tarehouse_assay::submission::Digest;
 
@@ -67,6 +68,7 @@ impl From<Report> for v1::Report {
             zero_point_energy_kj_per_mol: report.zero_point_energy_kj_per_mol,
             free_energy: every(report.free_energy),
             curves: Some(report.curves.into()),
+            lowest_branches: every(report.lowest_branches),
         }
     }
 }
@@ -90,6 +92,7 @@ impl TryFrom<v1::Report> for Report {
             zero_point_energy_kj_per_mol: report.zero_point_energy_kj_per_mol,
             free_energy: every(report.free_energy),
             curves: report.curves.ok_or(missing("curves"))?.into(),
+            lowest_branches: each(report.lowest_branches)?,
         })
     }
 }
@@ -209,6 +212,30 @@ impl TryFrom<v1::SoftMode> for SoftMode {
     }
 }
 
+impl From<LowestBranch> for v1::LowestBranch {
+    fn from(branch: LowestBranch) -> Self {
+        Self {
+            q: branch.q.to_vec(),
+            wavenumber_per_cm: branch.wavenumber_per_cm,
+            lower_per_cm: branch.lower_per_cm,
+            upper_per_cm: branch.upper_per_cm,
+        }
+    }
+}
+
+impl TryFrom<v1::LowestBranch> for LowestBranch {
+    type Error = ConvertError;
+
+    fn try_from(branch: v1::LowestBranch) -> Result<Self, ConvertError> {
+        Ok(Self {
+            q: triple("q", branch.q)?,
+            wavenumber_per_cm: branch.wavenumber_per_cm,
+            lower_per_cm: branch.lower_per_cm,
+            upper_per_cm: branch.upper_per_cm,
+        })
+    }
+}
+
 impl From<Mesh> for v1::Mesh {
     fn from(mesh: Mesh) -> Self {
         Self {
@@ -263,6 +290,7 @@ alike! { CrystalFacts {
     projection_largest_ev_per_ang2,
     projection_free_energy_kj_per_mol,
     lattice_energy_kj_per_mol,
+    compressibility_per_gpa,
 } }
 alike! { FreeEnergy {
     temperature_k,

@@ -5,8 +5,8 @@ use proptest::option;
 use proptest::prelude::*;
 use prost::Message as _;
 use tarehouse_assay::report::{
-    CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, Mesh, Noise, Report, Rule, Severity,
-    SoftMode, Strength, Tag, TruncationChange, Verdict,
+    CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, LowestBranch, Mesh, Noise, Report,
+    Rule, Severity, SoftMode, Strength, Tag, TruncationChange, Verdict,
 };
 use tarehouse_proto::convert::ConvertError;
 use tarehouse_proto::v1;
@@ -106,7 +106,7 @@ fn noise() -> impl Strategy<Value = Noise> {
 }
 
 fn facts() -> impl Strategy<Value = CrystalFacts> {
-    (any::<[u32; 2]>(), word(), vec(number(), 5), vec(maybe(), 3)).prop_map(|(n, symbol, x, y)| {
+    (any::<[u32; 2]>(), word(), vec(number(), 5), vec(maybe(), 4)).prop_map(|(n, symbol, x, y)| {
         CrystalFacts {
             space_group_number: n[0],
             space_group_symbol: symbol,
@@ -119,6 +119,7 @@ fn facts() -> impl Strategy<Value = CrystalFacts> {
             projection_largest_ev_per_ang2: x[3],
             projection_free_energy_kj_per_mol: y[2],
             lattice_energy_kj_per_mol: x[4],
+            compressibility_per_gpa: y[3],
         }
     })
 }
@@ -146,6 +147,15 @@ fn curves() -> impl Strategy<Value = Curves> {
     })
 }
 
+fn branch() -> impl Strategy<Value = LowestBranch> {
+    vec(number(), 6).prop_map(|x| LowestBranch {
+        q: [x[0], x[1], x[2]],
+        wavenumber_per_cm: x[3],
+        lower_per_cm: x[4],
+        upper_per_cm: x[5],
+    })
+}
+
 fn report() -> impl Strategy<Value = Report> {
     (
         (any::<[u8; 32]>(), any::<[u8; 32]>(), number(), word()),
@@ -157,7 +167,12 @@ fn report() -> impl Strategy<Value = Report> {
             vec(soft_mode(), 0..3),
         ),
         any::<[u32; 5]>(),
-        (facts(), vec(free_energy(), 0..3), curves()),
+        (
+            facts(),
+            vec(free_energy(), 0..3),
+            curves(),
+            vec(branch(), 0..3),
+        ),
     )
         .prop_map(
             |((policy, package, zero_point, version), verdict, judged, mesh, found)| Report {
@@ -178,6 +193,7 @@ fn report() -> impl Strategy<Value = Report> {
                 zero_point_energy_kj_per_mol: zero_point,
                 free_energy: found.1,
                 curves: found.2,
+                lowest_branches: found.3,
             },
         )
 }

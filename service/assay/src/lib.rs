@@ -1,5 +1,6 @@
 //! Judgement: checks, soft-mode tags, free-energy bracket and verdict. No input or output, no async.
 
+mod branches;
 mod checks;
 mod curves;
 mod effective;
@@ -7,7 +8,10 @@ mod facts;
 mod free_energy;
 mod noise;
 pub mod policy;
+pub mod pressure;
+pub mod quasi_harmonic;
 pub mod report;
+pub mod series;
 mod soft_modes;
 mod spectra;
 pub mod submission;
@@ -113,6 +117,7 @@ pub fn examine(
         zero_point_energy_kj_per_mol: free_energy.first().map_or(0.0, |f| f.central_kj_per_mol),
         free_energy,
         curves: curves::curves(&workup, &spectra),
+        lowest_branches: branches::lowest(&workup, &spectra),
     };
     progress.advance("judgement", 1, 1);
     Ok(report)

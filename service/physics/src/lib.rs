@@ -6,6 +6,7 @@
 pub mod crystal;
 pub mod density_of_states;
 pub mod dynamics;
+pub mod elastic;
 pub mod elements;
 pub mod force_constants;
 pub mod gamma_point;

@@ -159,6 +159,7 @@ pub(crate) fn failed_report(package_digest: Digest, policy: &Policy, attempts: u
         zero_point_energy_kj_per_mol: 0.0,
         free_energy: Vec::new(),
         curves: Curves::default(),
+        lowest_branches: Vec::new(),
     };
     v1::Report::from(report).encode_to_vec()
 }

@@ -138,6 +138,7 @@ pub(crate) fn report(submission: &Submission, policy: &Policy, verdict: Verdict)
         zero_point_energy_kj_per_mol: 2.0,
         free_energy,
         curves: Curves::default(),
+        lowest_branches: Vec::new(),
     }
 }
 
