@@ -173,6 +173,14 @@ pub fn judge(members: &[Member], resolution: &Resolution) -> Series {
     }
 }
 
+/// Settings that differ besides cell and positions, values in the order given.
+pub fn differing_besides_geometry(setups: &[Setup]) -> Vec<Differing> {
+    let setups: Vec<&Setup> = setups.iter().collect();
+    let mut differing = settings::differing(&setups);
+    differing.retain(|setting| setting.setting != settings::GEOMETRY);
+    differing
+}
+
 fn free_energies(members: &[&Member], resolution: &Resolution) -> Vec<Quantity> {
     let temperature_k = resolution.temperature_k;
     let values: Vec<Option<Value>> = members

@@ -13,6 +13,9 @@ const SAME_NUMBER: f64 = 1e-9;
 /// Distance up to which two geometries are one, Å.
 const SAME_GEOMETRY_ANG: f64 = 1e-4;
 
+/// Name of cell and positions as a setting.
+pub(super) const GEOMETRY: &str = "geometry";
+
 /// What is written where a setting was not declared.
 const UNDECLARED: &str = "undeclared";
 
@@ -212,7 +215,7 @@ fn geometry(setups: &[&Setup]) -> Option<Differing> {
         })
         .collect();
     (known.len() > 1).then(|| Differing {
-        setting: "geometry",
+        setting: GEOMETRY,
         values: classes
             .iter()
             .zip(setups)
