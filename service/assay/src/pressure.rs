@@ -9,10 +9,6 @@ use tarehouse_physics::units::AVOGADRO_PER_MOL;
 /// One GPa Å³ in kJ/mol (exact): 1e9 Pa · 1e-30 m³ · N_A · 1e-3.
 pub const GPA_ANG3_TO_KJ_PER_MOL: f64 = AVOGADRO_PER_MOL * 1e-24;
 
-/// Largest share of volume p/B that the elastic term is used for: there the next term, −(B′ + 1)/3 · p/B of it, is a
-/// twelfth of it for B′ = 7.
-pub const COMPRESSION_MAX: f64 = 0.03;
-
 /// Pressure derivative B′ that the neglected third-order term is judged with. Molecular crystals: 6 to 10, common knowledge.
 const BULK_MODULUS_DERIVATIVE: f64 = 10.0;
 
@@ -112,6 +108,9 @@ impl Compression {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// 3 %, the built-in policy's limit.
+    const COMPRESSION_MAX: f64 = 0.03;
 
     const SOFT: Compression = Compression {
         volume_ang3: 150.0,

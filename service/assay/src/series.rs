@@ -49,15 +49,14 @@ pub struct Resolution {
 }
 
 impl Resolution {
-    /// From the policy: brackets that are as wide as what is held hide changes. 5 cm⁻¹ on an external mode of 50 cm⁻¹ moves
-    /// F(300 K) by kT ln 1.1 = 0.24 kJ/mol; 0.1 cm⁻¹ by 0.005.
+    /// From the policy.
     pub fn of(limits: &crate::policy::Limits) -> Self {
         Self {
             temperature_k: limits.bracket.judged_temperature_k,
-            free_energy_kj_per_mol: limits.bracket.half_width_hold_kj_per_mol,
-            wavenumber_per_cm: 5.0,
+            free_energy_kj_per_mol: limits.comparison.series_resolution_kj_per_mol,
+            wavenumber_per_cm: limits.comparison.series_resolution_per_cm,
             free_energy_floor_kj_per_mol: limits.bracket.floor_kj_per_mol,
-            wavenumber_floor_per_cm: 0.1,
+            wavenumber_floor_per_cm: limits.comparison.series_floor_per_cm,
         }
     }
 }

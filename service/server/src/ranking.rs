@@ -6,7 +6,7 @@
 use std::cmp::Ordering;
 use std::collections::BTreeMap;
 
-use tarehouse_assay::pressure::{COMPRESSION_MAX, Compression, PressureError, PressureTerm};
+use tarehouse_assay::pressure::{Compression, PressureError, PressureTerm};
 use tarehouse_physics::thermodynamics::FreeEnergyCurve;
 use tarehouse_proto::v1;
 
@@ -53,13 +53,14 @@ pub(crate) struct Candidate {
 pub(crate) fn press(
     mut candidates: Vec<Candidate>,
     pressure_gpa: f64,
+    compression_max: f64,
 ) -> Result<Vec<Candidate>, Failure> {
     if pressure_gpa <= 0.0 {
         return Ok(candidates);
     }
     let mut breaches = Vec::new();
     for candidate in &mut candidates {
-        match candidate.compression.term(pressure_gpa, COMPRESSION_MAX) {
+        match candidate.compression.term(pressure_gpa, compression_max) {
             Ok(term) => candidate.pressure = Ok(Some(term)),
             Err(error @ PressureError::BeyondRange { .. }) => breaches.push(Breach {
                 field: "pressure_gpa".to_owned(),

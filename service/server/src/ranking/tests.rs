@@ -132,7 +132,7 @@ fn pressure_favours_the_denser_form_and_widens_the_brackets() {
     let loose = candidate("II", -9.5, 2.0, 1e-5);
     let forms = vec![dense, loose];
     let rows = |pressure_gpa: f64| {
-        let pressed = press(forms.clone(), pressure_gpa).unwrap();
+        let pressed = press(forms.clone(), pressure_gpa, 0.03).unwrap();
         rank(pressed, &[0.0]).remove(0).rows
     };
     let free = rows(0.0);
@@ -155,7 +155,7 @@ fn too_much_pressure_is_refused_and_an_unknown_stiffness_is_listed() {
     let mut unknown = candidate("0", -50.0, 2.0, 1e-5);
     unknown.compression.compressibility_per_gpa = None;
     let forms = vec![unknown, candidate("I", -9.0, 2.0, 1e-5)];
-    let rows = rank(press(forms.clone(), 0.2).unwrap(), &[0.0])
+    let rows = rank(press(forms.clone(), 0.2, 0.03).unwrap(), &[0.0])
         .remove(0)
         .rows;
     assert_eq!([rows[0].form.as_str(), rows[1].form.as_str()], ["I", "0"]);
@@ -166,7 +166,7 @@ fn too_much_pressure_is_refused_and_an_unknown_stiffness_is_listed() {
     );
     let Err(Failure::Forbidden {
         reason, breaches, ..
-    }) = press(forms, 0.25)
+    }) = press(forms, 0.25, 0.03)
     else {
         panic!("must be refused");
     };

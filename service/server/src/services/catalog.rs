@@ -158,7 +158,8 @@ impl Service {
                 candidates.push(candidate);
             }
         }
-        let candidates = ranking::press(candidates, pressure_gpa)?;
+        let limit = self.core.config.policy.limits.comparison.compression_max;
+        let candidates = ranking::press(candidates, pressure_gpa, limit)?;
         Ok(ranking::rank(candidates, &temperatures))
     }
 

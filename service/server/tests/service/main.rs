@@ -12,6 +12,7 @@ mod binary;
 mod lists;
 mod refusals;
 mod running;
+mod series;
 mod support;
 mod uploads;
 mod whole;
