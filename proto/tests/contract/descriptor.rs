@@ -183,7 +183,7 @@ fn lists_are_paginated_and_answers_wrapped() {
         }
         methods.push(name);
     }
-    assert_eq!(methods.len(), 15, "{methods:?}");
+    assert_eq!(methods.len(), 17, "{methods:?}");
 }
 
 /// `wrong-unit` and the prefix `LIKELY_CAUSE` give `LIKELY_CAUSE_WRONG_UNIT`.
