@@ -4,8 +4,9 @@ use std::path::PathBuf;
 
 use prost::Message as _;
 
-const FILES: [&str; 6] = [
+const FILES: [&str; 7] = [
     "tarehouse/v1/report.proto",
+    "tarehouse/v1/series.proto",
     "tarehouse/v1/submission.proto",
     "tarehouse/v1/submission_service.proto",
     "tarehouse/v1/transfer_service.proto",

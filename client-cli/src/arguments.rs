@@ -79,6 +79,16 @@ pub enum Command {
         tarehouse rank \"velnaric acid\" --temperature 0,100,300,400\n  \
         tarehouse rank \"velnaric acid\" --temperature 0,300 --sort-at 300 --level pbe")]
     Rank(RankArgs),
+    /// Follow one form along a setting: supercell, displacement, tolerance, sampling; says whether it still moves.
+    #[command(after_help = "Examples:\n  tarehouse series 3f2a… 77c0… 91be…\n  \
+        tarehouse series records/3f2a… records/77c0… records/91be… --format json")]
+    Series(SeriesArgs),
+    /// Free enthalpy, expansion and stiffness of one form from four volumes or more.
+    #[command(
+        after_help = "Examples:\n  tarehouse volume-series 3f2a… 77c0… 91be… a04d…\n  \
+        tarehouse volume-series 3f2a… 77c0… 91be… a04d… --temperature 0,300 --pressure 0,0.5,1"
+    )]
+    VolumeSeries(VolumeSeriesArgs),
     /// See it work: examine the built-in packages in a fresh store and rank their forms.
     #[command(after_help = "Examples:\n  tarehouse demo\n  tarehouse demo --keep ./demo-store")]
     Demo(DemoArgs),
@@ -297,9 +307,48 @@ pub struct RankArgs {
     /// Order by the energy at this temperature instead of the first, K
     #[arg(long, value_name = "K", value_parser = kelvin)]
     pub sort_at: Option<f64>,
+    /// Under this pressure, GPa: energies are G at each form's own cell
+    #[arg(long, value_name = "GPA", value_parser = gigapascal)]
+    pub pressure: Option<f64>,
     /// Only levels of theory that contain this text
     #[arg(long, value_name = "TEXT")]
     pub level: Option<String>,
+    /// Where to.
+    #[command(flatten)]
+    pub connect: ConnectArgs,
+    /// How to write.
+    #[command(flatten)]
+    pub format: FormatArgs,
+}
+
+/// Arguments of `series`.
+#[derive(Debug, Args)]
+pub struct SeriesArgs {
+    /// Members: ID, submissions/ID or records/ID, in any order
+    #[arg(required = true, num_args = 2.., value_name = "MEMBER")]
+    pub members: Vec<String>,
+    /// Where to.
+    #[command(flatten)]
+    pub connect: ConnectArgs,
+    /// How to write.
+    #[command(flatten)]
+    pub format: FormatArgs,
+}
+
+/// Arguments of `volume-series`.
+#[derive(Debug, Args)]
+pub struct VolumeSeriesArgs {
+    /// Members: ID, submissions/ID or records/ID, in any order
+    #[arg(required = true, num_args = 4.., value_name = "MEMBER")]
+    pub members: Vec<String>,
+    /// Temperatures, K, with commas between
+    #[arg(long, value_name = "K,K,…", value_delimiter = ',', default_values_t = [0.0, 300.0],
+        value_parser = kelvin)]
+    pub temperature: Vec<f64>,
+    /// Pressures, GPa, with commas between
+    #[arg(long, value_name = "GPA,GPA,…", value_delimiter = ',', default_values_t = [0.0],
+        value_parser = gigapascal)]
+    pub pressure: Vec<f64>,
     /// Where to.
     #[command(flatten)]
     pub connect: ConnectArgs,
@@ -314,6 +363,15 @@ pub struct DemoArgs {
     /// Keep the store in this folder, to look at it afterwards with --local
     #[arg(long, value_name = "DIR")]
     pub keep: Option<PathBuf>,
+}
+
+fn gigapascal(text: &str) -> Result<f64, String> {
+    let text = text.trim().trim_end_matches("GPa").trim_end();
+    match text.parse::<f64>() {
+        Ok(value) if value.is_finite() && value >= 0.0 => Ok(value),
+        Ok(_) => Err("a pressure is finite and not below 0 GPa".to_owned()),
+        Err(_) => Err("expected a number of gigapascal, such as 0.5".to_owned()),
+    }
 }
 
 fn kelvin(text: &str) -> Result<f64, String> {
@@ -372,6 +430,34 @@ mod tests {
                 "{wrong}"
             );
         }
+    }
+
+    #[test]
+    fn series_want_members_and_pressures_are_gigapascal() {
+        let Command::VolumeSeries(volumes) =
+            parse("tarehouse volume-series a b c d --pressure 0,1.5GPa")
+                .unwrap()
+                .command
+        else {
+            panic!("not volume-series");
+        };
+        assert_eq!(volumes.members, ["a", "b", "c", "d"]);
+        assert_eq!(
+            (volumes.pressure, volumes.temperature),
+            (vec![0.0, 1.5], vec![0.0, 300.0])
+        );
+        for wrong in [
+            "series a",
+            "volume-series a b c",
+            "rank x --pressure=-1",
+            "rank x --pressure=nan",
+        ] {
+            assert!(parse(&format!("tarehouse {wrong}")).is_err(), "{wrong}");
+        }
+        let Command::Series(series) = parse("tarehouse series a b c").unwrap().command else {
+            panic!("not series");
+        };
+        assert_eq!(series.members.len(), 3);
     }
 
     #[test]

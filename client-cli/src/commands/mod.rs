@@ -6,6 +6,7 @@ pub mod list;
 pub mod precheck;
 pub mod rank;
 pub mod report;
+pub mod series;
 pub mod submit;
 pub mod watch;
 pub mod withdraw;
@@ -105,6 +106,8 @@ pub async fn run(command: Command, context: &mut Context<'_>) -> Result<Exit, Fa
         Command::List(args) => list::run(args, context).await,
         Command::Fetch(args) => fetch::run(args, context).await,
         Command::Rank(args) => rank::run(args, context).await,
+        Command::Series(args) => series::run(args, context).await,
+        Command::VolumeSeries(args) => series::run_volumes(args, context).await,
         Command::Demo(args) => demo::run(args, context).await,
     }
 }

@@ -23,14 +23,21 @@ pub async fn run(args: RankArgs, context: &mut Context<'_>) -> Result<Exit, Fail
     let sort_index = sort_index(&args)?;
     let target = context.existing_target(&args.connect)?;
     let work = async |session: &Session, context: &mut Context<'_>| {
-        get(session, &args.compound, &args.temperature, &context.pause).await
+        get_pressed(
+            session,
+            &args.compound,
+            &args.temperature,
+            args.pressure,
+            &context.pause,
+        )
+        .await
     };
     let all = in_session(target, context, &ResumeNote::default(), work).await?;
     let tables = of_level(all, &args)?;
     let text = if context.console.wants_json(args.format.format) {
         wire_json::pretty(&RankFormsResponse { tables })?
     } else {
-        to_text(&args.compound, &tables, sort_index, context.console.view())
+        to_text(&title(&args), &tables, sort_index, context.console.view())
     };
     context.console.data(&text)?;
     Ok(Exit::Done)
@@ -46,12 +53,23 @@ pub async fn get(
     temperatures_k: &[f64],
     pause: &Pause,
 ) -> Result<Vec<RankTable>, Failure> {
+    get_pressed(session, compound, temperatures_k, None, pause).await
+}
+
+async fn get_pressed(
+    session: &Session,
+    compound: &str,
+    temperatures_k: &[f64],
+    pressure_gpa: Option<f64>,
+    pause: &Pause,
+) -> Result<Vec<RankTable>, Failure> {
     let request = RankFormsRequest {
         compound: compound.to_owned(),
         temperatures_k: temperatures_k.to_vec(),
         energy_level: None,
         constants_level: None,
         cell_protocol: CellProtocol::Unspecified.into(),
+        pressure_gpa,
     };
     let answer = retrying(pause, || {
         let mut client = session.catalog();
@@ -61,6 +79,14 @@ pub async fn get(
     .await
     .map_err(|status| Failure::service(format!("rank the forms of {compound}"), status))?;
     Ok(answer.into_inner().tables)
+}
+
+/// The compound, with the pressure where there is one.
+fn title(args: &RankArgs) -> String {
+    match args.pressure {
+        Some(pressure) if pressure > 0.0 => format!("{} at {pressure} GPa", args.compound),
+        _ => args.compound.clone(),
+    }
 }
 
 fn sort_index(args: &RankArgs) -> Result<usize, Failure> {

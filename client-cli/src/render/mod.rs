@@ -5,9 +5,11 @@ pub mod lists;
 pub mod numbers;
 pub mod rank;
 pub mod report;
+pub mod series;
 pub mod soft_modes;
 pub mod table;
 pub mod text;
+pub mod volumes;
 pub mod words;
 
 pub use text::View;

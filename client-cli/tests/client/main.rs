@@ -12,4 +12,5 @@ mod local;
 mod ranking;
 mod report;
 mod sending;
+mod series;
 mod support;

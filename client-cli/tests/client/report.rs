@@ -100,6 +100,7 @@ fn report() -> Report {
         zero_point_energy_kj_per_mol: 50.0,
         free_energy: curve(),
         curves: None,
+        lowest_branches: Vec::new(),
     }
 }
 

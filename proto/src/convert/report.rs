@@ -1,8 +1,8 @@
 //! The report.
 
 use tarehouse_assay::report::{
-    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, Mesh, Noise, PolarModes, Remedy,
-    Report, SoftMode, TruncationChange,
+    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, LowestBranch, Mesh, Noise, PolarModes,
+    Remedy, Report, SoftMode, TruncationChange,
 };
 use tarehouse_assay::submission::Digest;
 
@@ -77,6 +77,7 @@ impl From<Report> for v1::Report {
                 })
                 .collect(),
             remedies: every(report.remedies),
+            lowest_branches: every(report.lowest_branches),
         }
     }
 }
@@ -107,6 +108,7 @@ impl TryFrom<v1::Report> for Report {
                 .map(|draw| draw.free_energy_kj_per_mol)
                 .collect(),
             remedies: every(report.remedies),
+            lowest_branches: each(report.lowest_branches)?,
         })
     }
 }
@@ -226,6 +228,30 @@ impl TryFrom<v1::SoftMode> for SoftMode {
     }
 }
 
+impl From<LowestBranch> for v1::LowestBranch {
+    fn from(branch: LowestBranch) -> Self {
+        Self {
+            q: branch.q.to_vec(),
+            wavenumber_per_cm: branch.wavenumber_per_cm,
+            lower_per_cm: branch.lower_per_cm,
+            upper_per_cm: branch.upper_per_cm,
+        }
+    }
+}
+
+impl TryFrom<v1::LowestBranch> for LowestBranch {
+    type Error = ConvertError;
+
+    fn try_from(branch: v1::LowestBranch) -> Result<Self, ConvertError> {
+        Ok(Self {
+            q: triple("q", branch.q)?,
+            wavenumber_per_cm: branch.wavenumber_per_cm,
+            lower_per_cm: branch.lower_per_cm,
+            upper_per_cm: branch.upper_per_cm,
+        })
+    }
+}
+
 impl From<Mesh> for v1::Mesh {
     fn from(mesh: Mesh) -> Self {
         Self {
@@ -283,6 +309,7 @@ impl From<CrystalFacts> for v1::CrystalFacts {
             projection_free_energy_kj_per_mol: facts.projection_free_energy_kj_per_mol,
             lattice_energy_kj_per_mol: facts.lattice_energy_kj_per_mol,
             polar_modes: every(facts.polar_modes),
+            compressibility_per_gpa: facts.compressibility_per_gpa,
         }
     }
 }
@@ -304,6 +331,7 @@ impl TryFrom<v1::CrystalFacts> for CrystalFacts {
             projection_free_energy_kj_per_mol: facts.projection_free_energy_kj_per_mol,
             lattice_energy_kj_per_mol: facts.lattice_energy_kj_per_mol,
             polar_modes: each(facts.polar_modes)?,
+            compressibility_per_gpa: facts.compressibility_per_gpa,
         })
     }
 }

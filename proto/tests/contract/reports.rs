@@ -5,8 +5,9 @@ use proptest::option;
 use proptest::prelude::*;
 use prost::Message as _;
 use tarehouse_assay::report::{
-    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, Mesh, Noise, PolarModes,
-    Remedy, Report, Rule, Severity, SoftMode, Strength, Tag, TruncationChange, Verdict,
+    BracketParts, CrystalFacts, Curves, Finding, FreeEnergy, LikelyCause, LowestBranch, Mesh,
+    Noise, PolarModes, Remedy, Report, Rule, Severity, SoftMode, Strength, Tag, TruncationChange,
+    Verdict,
 };
 use tarehouse_proto::convert::ConvertError;
 use tarehouse_proto::v1;
@@ -106,7 +107,7 @@ fn noise() -> impl Strategy<Value = Noise> {
 }
 
 fn facts() -> impl Strategy<Value = CrystalFacts> {
-    (any::<[u32; 2]>(), word(), vec(number(), 5), vec(maybe(), 3)).prop_map(|(n, symbol, x, y)| {
+    (any::<[u32; 2]>(), word(), vec(number(), 5), vec(maybe(), 4)).prop_map(|(n, symbol, x, y)| {
         CrystalFacts {
             space_group_number: n[0],
             space_group_symbol: symbol,
@@ -123,6 +124,7 @@ fn facts() -> impl Strategy<Value = CrystalFacts> {
                 direction: [x[0], x[1], x[2]],
                 wavenumbers_per_cm: x.clone(),
             }],
+            compressibility_per_gpa: y[3],
         }
     })
 }
@@ -174,6 +176,15 @@ fn next_steps() -> impl Strategy<Value = NextSteps> {
     )
 }
 
+fn branch() -> impl Strategy<Value = LowestBranch> {
+    vec(number(), 6).prop_map(|x| LowestBranch {
+        q: [x[0], x[1], x[2]],
+        wavenumber_per_cm: x[3],
+        lower_per_cm: x[4],
+        upper_per_cm: x[5],
+    })
+}
+
 fn report() -> impl Strategy<Value = Report> {
     (
         (any::<[u8; 32]>(), any::<[u8; 32]>(), number(), word()),
@@ -185,7 +196,13 @@ fn report() -> impl Strategy<Value = Report> {
             vec(soft_mode(), 0..3),
         ),
         any::<[u32; 5]>(),
-        (facts(), vec(free_energy(), 0..3), curves(), next_steps()),
+        (
+            facts(),
+            vec(free_energy(), 0..3),
+            curves(),
+            next_steps(),
+            vec(branch(), 0..3),
+        ),
     )
         .prop_map(
             |((policy, package, zero_point, version), verdict, judged, mesh, found)| Report {
@@ -209,6 +226,7 @@ fn report() -> impl Strategy<Value = Report> {
                 free_energy_draws: found.3.1,
                 remedies: found.3.2,
                 curves: found.2,
+                lowest_branches: found.4,
             },
         )
 }

@@ -1,5 +1,6 @@
 //! Facts about the crystal that a report states beside its findings.
 
+use tarehouse_physics::elastic::ElasticConstants;
 use tarehouse_physics::units::EV_TO_KJ_PER_MOL;
 use tarehouse_physics::vibrations;
 
@@ -31,6 +32,8 @@ pub(crate) fn facts(
         lattice_energy_kj_per_mol: workup.submission.energy.lattice_energy_ev * EV_TO_KJ_PER_MOL
             / units,
         polar_modes: crate::polar::modes_by_direction(workup),
+        compressibility_per_gpa: ElasticConstants::of(&workup.acoustic, &workup.crystal)
+            .compressibility_per_gpa(),
     }
 }
 

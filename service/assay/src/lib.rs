@@ -1,5 +1,6 @@
 //! Judgement: checks, soft-mode tags, free-energy bracket and verdict. No input or output, no async.
 
+mod branches;
 mod checks;
 mod curves;
 mod effective;
@@ -8,8 +9,11 @@ mod free_energy;
 mod noise;
 mod polar;
 pub mod policy;
+pub mod pressure;
+pub mod quasi_harmonic;
 mod remedies;
 pub mod report;
+pub mod series;
 mod soft_modes;
 mod spectra;
 pub mod submission;
@@ -121,6 +125,7 @@ pub fn examine(
         free_energy_draws: energies.draws,
         remedies,
         curves: curves::curves(&workup, &spectra),
+        lowest_branches: branches::lowest(&workup, &spectra),
     };
     progress.advance("judgement", 1, 1);
     Ok(report)

@@ -48,6 +48,34 @@ pub struct Limits {
     pub curves: CurveLimits,
     /// Settings, by kind of method.
     pub settings: SettingsLimits,
+    /// Comparison of examinations; policies written before it existed get the values of [`ComparisonLimits::default`].
+    #[serde(default)]
+    pub comparison: ComparisonLimits,
+}
+
+/// `[comparison]`
+#[derive(Debug, Clone, PartialEq, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct ComparisonLimits {
+    /// Largest p/B that the elastic term answers for, a share of the volume.
+    pub compression_max: f64,
+    /// Combined brackets wider than this to either side hide a change of F along a series, kJ/mol per formula unit.
+    pub series_resolution_kj_per_mol: f64,
+    /// The same for a lowest branch, cm⁻¹.
+    pub series_resolution_per_cm: f64,
+    /// Changes of a lowest branch below this are equal, cm⁻¹.
+    pub series_floor_per_cm: f64,
+}
+
+impl Default for ComparisonLimits {
+    fn default() -> Self {
+        Self {
+            compression_max: 0.03,
+            series_resolution_kj_per_mol: 2.0,
+            series_resolution_per_cm: 5.0,
+            series_floor_per_cm: 0.1,
+        }
+    }
 }
 
 macro_rules! limits {
@@ -334,6 +362,9 @@ impl Limits {
             "mesh.spacing_per_angstrom must be positive"
         } else if self.soft_modes.noise_draws < 2 {
             "soft_modes.noise_draws must be at least 2"
+        } else if !(self.comparison.compression_max > 0.0 && self.comparison.compression_max < 1.0)
+        {
+            "comparison.compression_max must be between 0 and 1"
         } else {
             return Ok(());
         };

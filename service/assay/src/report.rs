@@ -42,6 +42,21 @@ pub struct Report {
     pub remedies: Vec<Remedy>,
     /// Curves for drawing.
     pub curves: Curves,
+    /// Lowest branch at each inequivalent commensurate point; empty in reports of older programs.
+    pub lowest_branches: Vec<LowestBranch>,
+}
+
+/// The lowest branch at one commensurate wave vector, the rigid translations at Γ left out.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct LowestBranch {
+    /// Wave vector.
+    pub q: [f64; 3],
+    /// Wavenumber with projected constants, cm⁻¹.
+    pub wavenumber_per_cm: f64,
+    /// Lower end of its bracket: the upload's noise, cm⁻¹.
+    pub lower_per_cm: f64,
+    /// Upper end.
+    pub upper_per_cm: f64,
 }
 
 /// What an examination concludes.
@@ -372,6 +387,9 @@ pub struct CrystalFacts {
     pub lattice_energy_kj_per_mol: f64,
     /// Optical modes at Γ by direction, along a*, b* and c*; empty where no dipole–dipole part is set apart.
     pub polar_modes: Vec<PolarModes>,
+    /// −(1/V) dV/dp from the relaxed long-wave elastic constants, 1/GPa; absent where these are not positive definite,
+    /// and in reports of older programs.
+    pub compressibility_per_gpa: Option<f64>,
 }
 
 /// Optical modes at Γ of a polar crystal, reached along one direction: longitudinal and transverse ones split.

@@ -7,6 +7,7 @@ pub mod crystal;
 pub mod density_of_states;
 pub mod dipoles;
 pub mod dynamics;
+pub mod elastic;
 pub mod elements;
 pub mod ewald;
 pub mod force_constants;

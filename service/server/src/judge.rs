@@ -162,6 +162,7 @@ pub(crate) fn failed_report(package_digest: Digest, policy: &Policy, attempts: u
         free_energy_draws: Vec::new(),
         remedies: Vec::new(),
         curves: Curves::default(),
+        lowest_branches: Vec::new(),
     };
     v1::Report::from(report).encode_to_vec()
 }

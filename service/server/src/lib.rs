@@ -20,6 +20,7 @@ pub mod limits;
 mod names;
 mod ranking;
 mod receive;
+mod series_wire;
 mod serve;
 mod services;
 mod uploads;

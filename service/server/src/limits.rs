@@ -14,6 +14,10 @@ pub const PAGE_SIZE_MAX: u32 = narrow(limits::PAGE_SIZE.max);
 pub const PAGE_SIZE_DEFAULT: u32 = limits::PAGE_SIZE_DEFAULT;
 /// Temperatures in one ranking.
 pub const TEMPERATURES_MAX: usize = narrow(limits::TEMPERATURES.max) as usize;
+/// Members of one series.
+pub const SERIES_MEMBERS_MAX: usize = 64;
+/// Pressures of one request.
+pub const PRESSURES_MAX: usize = 64;
 /// Arrays of one submission.
 pub const ARRAYS_MAX: usize = tarehouse_store::limits::ARRAY_COUNT_MAX;
 /// Watches open at the same time.

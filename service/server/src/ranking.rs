@@ -6,8 +6,11 @@
 use std::cmp::Ordering;
 use std::collections::BTreeMap;
 
+use tarehouse_assay::pressure::{Compression, PressureError, PressureTerm};
 use tarehouse_physics::thermodynamics::FreeEnergyCurve;
 use tarehouse_proto::v1;
+
+use crate::failure::{Breach, Failure, reason};
 
 /// What makes energies comparable.
 #[derive(Debug, Clone, PartialEq, Eq, PartialOrd, Ord)]
@@ -37,6 +40,48 @@ pub(crate) struct Candidate {
     pub(crate) zero_point_energy_kj_per_mol: f64,
     /// Vibrational free energy on the grid of its examination, ascending.
     pub(crate) free_energy: Vec<v1::FreeEnergy>,
+    /// Volume and compressibility.
+    pub(crate) compression: Compression,
+    /// What pressure adds; nothing at no pressure; else why it cannot be told.
+    pub(crate) pressure: Result<Option<PressureTerm>, String>,
+}
+
+/// Puts all forms under pressure. A form whose compressibility is not known will be listed with the reason.
+///
+/// # Errors
+/// Where a form would be pressed farther than one volume answers for: leaving it out would change who is lowest.
+pub(crate) fn press(
+    mut candidates: Vec<Candidate>,
+    pressure_gpa: f64,
+    compression_max: f64,
+) -> Result<Vec<Candidate>, Failure> {
+    if pressure_gpa <= 0.0 {
+        return Ok(candidates);
+    }
+    let mut breaches = Vec::new();
+    for candidate in &mut candidates {
+        match candidate.compression.term(pressure_gpa, compression_max) {
+            Ok(term) => candidate.pressure = Ok(Some(term)),
+            Err(error @ PressureError::BeyondRange { .. }) => breaches.push(Breach {
+                field: "pressure_gpa".to_owned(),
+                message: format!("{}: {error}", candidate.record),
+            }),
+            Err(error @ (PressureError::NotElastic | PressureError::NotAPressure { .. })) => {
+                candidate.pressure = Err(format!("not ranked under pressure: {error}"));
+            }
+        }
+    }
+    if breaches.is_empty() {
+        return Ok(candidates);
+    }
+    Err(Failure::Forbidden {
+        reason: reason::VOLUME_SERIES_NEEDED,
+        message: format!(
+            "{pressure_gpa} GPa is too much for one volume per form; submit each form at four volumes or more and ask \
+             for its volume series"
+        ),
+        breaches,
+    })
 }
 
 /// Free energy of one form at one temperature, kJ/mol.
@@ -45,6 +90,21 @@ struct Energy {
     vibrational: f64,
     below: f64,
     above: f64,
+    pressure: Option<f64>,
+}
+
+impl Energy {
+    fn under(self, term: Option<PressureTerm>) -> Self {
+        let Some(term) = term else {
+            return self;
+        };
+        Self {
+            below: self.below + term.uncertainty_kj_per_mol,
+            above: self.above + term.uncertainty_kj_per_mol,
+            pressure: Some(term.sum_kj_per_mol()),
+            ..self
+        }
+    }
 }
 
 /// One table per level, the newest record per form in each, rows lowest at the first temperature first.
@@ -109,14 +169,21 @@ fn first_energy(row: &v1::RankRow) -> f64 {
 fn column(forms: &[Candidate], temperature_k: f64) -> Vec<v1::RankPoint> {
     let energies: Vec<Result<Energy, String>> = forms
         .iter()
-        .map(|form| energy_at(&form.free_energy, temperature_k))
+        .map(|form| {
+            let energy = energy_at(&form.free_energy, temperature_k)?;
+            Ok(energy.under(form.pressure.clone()?))
+        })
         .collect();
     let totals: Vec<Option<f64>> = forms
         .iter()
         .zip(&energies)
         .map(|(form, energy)| {
             let energy = energy.as_ref().ok()?;
-            Some(form.lattice_energy_kj_per_mol + energy.vibrational)
+            Some(
+                form.lattice_energy_kj_per_mol
+                    + energy.vibrational
+                    + energy.pressure.unwrap_or_default(),
+            )
         })
         .collect();
     let lowest = totals
@@ -161,6 +228,7 @@ fn ranked(form: &Candidate, energy: Energy, relative: f64, temperature_k: f64) -
         static_kj_per_mol: Some(form.lattice_energy_kj_per_mol),
         zero_point_kj_per_mol: Some(form.zero_point_energy_kj_per_mol),
         thermal_kj_per_mol: Some(energy.vibrational - form.zero_point_energy_kj_per_mol),
+        pressure_kj_per_mol: energy.pressure,
     }
 }
 
@@ -197,6 +265,7 @@ fn energy_at(grid: &[v1::FreeEnergy], temperature_k: f64) -> Result<Energy, Stri
         vibrational,
         below: between(first.below, last.below),
         above: between(first.above, last.above),
+        pressure: None,
     })
 }
 
@@ -222,6 +291,7 @@ fn at_node(point: &v1::FreeEnergy) -> Energy {
         vibrational: point.central_kj_per_mol,
         below: point.central_kj_per_mol - point.lower_kj_per_mol,
         above: point.upper_kj_per_mol - point.central_kj_per_mol,
+        pressure: None,
     }
 }
 

@@ -1,6 +1,7 @@
 //! The services of the contract. A handler decodes, asks, encodes; it holds no physics.
 
 mod catalog;
+mod series;
 mod server;
 mod submission;
 pub(crate) mod transfer;

@@ -43,6 +43,7 @@ async fn report(house: &House, id: &str) -> Ended {
 
 async fn rank(house: &House) -> Ended {
     tarehouse(Command::Rank(RankArgs {
+        pressure: None,
         compound: "pelquonol".to_owned(),
         temperature: TEMPERATURES_K.to_vec(),
         sort_at: None,

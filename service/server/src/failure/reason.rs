@@ -54,6 +54,14 @@ pub const WATCHES_FULL: &str = "WATCHES_FULL";
 pub const FETCHES_FULL: &str = "FETCHES_FULL";
 /// A temperature lies outside the grid of the policy.
 pub const TEMPERATURE_OUTSIDE: &str = "TEMPERATURE_OUTSIDE";
+/// The members of a series are of different forms or levels.
+pub const SERIES_MIXED: &str = "SERIES_MIXED";
+/// The pressure is beyond what one volume answers for.
+pub const VOLUME_SERIES_NEEDED: &str = "VOLUME_SERIES_NEEDED";
+/// The members make no volume series.
+pub const VOLUME_SERIES_UNFIT: &str = "VOLUME_SERIES_UNFIT";
+/// No temperature and pressure asked for lies inside the volumes examined.
+pub const VOLUMES_EXCEEDED: &str = "VOLUMES_EXCEEDED";
 /// The service is stopping.
 pub const DRAINING: &str = "DRAINING";
 /// The principal holds too many drafts.

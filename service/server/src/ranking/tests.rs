@@ -31,6 +31,11 @@ fn candidate(form: &str, lattice: f64, zero_point: f64, a: f64) -> Candidate {
         lattice_energy_kj_per_mol: lattice,
         zero_point_energy_kj_per_mol: zero_point,
         free_energy,
+        compression: Compression {
+            volume_ang3: 150.0,
+            compressibility_per_gpa: Some(0.125),
+        },
+        pressure: Ok(None),
     }
 }
 
@@ -118,4 +123,54 @@ fn a_grid_that_ends_too_early_leaves_the_form_out() {
     let points = &tables[0].rows[0].points;
     assert!(points[0].defined);
     assert!(!points[1].defined && points[1].exclusion_reason.contains("grid"));
+}
+
+#[test]
+fn pressure_favours_the_denser_form_and_widens_the_brackets() {
+    let mut dense = candidate("I", -9.0, 2.0, 1e-5);
+    dense.compression.volume_ang3 = 140.0;
+    let loose = candidate("II", -9.5, 2.0, 1e-5);
+    let forms = vec![dense, loose];
+    let rows = |pressure_gpa: f64| {
+        let pressed = press(forms.clone(), pressure_gpa, 0.03).unwrap();
+        rank(pressed, &[0.0]).remove(0).rows
+    };
+    let free = rows(0.0);
+    assert_eq!(free[0].form, "II");
+    assert_eq!(free[0].points[0].pressure_kj_per_mol, None);
+    let pressed = rows(0.1);
+    assert_eq!(pressed[0].form, "I");
+    // By hand: p (1 - p/2B) = 0.1 · 0.99375 GPa; 0.60221408 kJ/mol/GPa/Å³.
+    let unit = 0.1 * 0.993_75 * 0.602_214_076;
+    close(pressed[0].points[0].pressure_kj_per_mol, 140.0 * unit);
+    close(pressed[1].points[0].relative_kj_per_mol, 10.0 * unit - 0.5);
+    let width = |point: &v1::RankPoint| {
+        point.upper_kj_per_mol.unwrap() - point.relative_kj_per_mol.unwrap()
+    };
+    assert!(width(&pressed[0].points[0]) > width(&free[0].points[0]));
+}
+
+#[test]
+fn too_much_pressure_is_refused_and_an_unknown_stiffness_is_listed() {
+    let mut unknown = candidate("0", -50.0, 2.0, 1e-5);
+    unknown.compression.compressibility_per_gpa = None;
+    let forms = vec![unknown, candidate("I", -9.0, 2.0, 1e-5)];
+    let rows = rank(press(forms.clone(), 0.2, 0.03).unwrap(), &[0.0])
+        .remove(0)
+        .rows;
+    assert_eq!([rows[0].form.as_str(), rows[1].form.as_str()], ["I", "0"]);
+    assert!(
+        rows[1].points[0]
+            .exclusion_reason
+            .contains("compressibility")
+    );
+    let Err(Failure::Forbidden {
+        reason, breaches, ..
+    }) = press(forms, 0.25, 0.03)
+    else {
+        panic!("must be refused");
+    };
+    assert_eq!(reason, "VOLUME_SERIES_NEEDED");
+    assert_eq!(breaches.len(), 1);
+    assert!(breaches[0].message.starts_with("records/I"), "{breaches:?}");
 }

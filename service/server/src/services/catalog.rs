@@ -2,6 +2,7 @@
 
 use std::sync::Arc;
 
+use tarehouse_assay::pressure::Compression;
 use tarehouse_proto::v1;
 use tarehouse_store::{PageRequest, RecordFilter, RecordView};
 use tonic::{Request, Response, Status};
@@ -10,6 +11,7 @@ use crate::core::Core;
 use crate::failure::{Breach, Failure, reason};
 use crate::names::{self, token};
 use crate::ranking::{self, Candidate, LevelKey};
+use crate::services::series::pressure;
 use crate::{limits, wire};
 
 /// Temperatures of a ranking where the request names none, K.
@@ -141,6 +143,7 @@ impl Service {
             energy_level: request.energy_level.as_deref().map(normalised),
             ..RecordFilter::default()
         };
+        let pressure_gpa = pressure("pressure_gpa", request.pressure_gpa.unwrap_or_default())?;
         let mut candidates = Vec::new();
         for record in &self.ranked_records(filter).await? {
             let candidate = self.candidate(record).await?;
@@ -150,6 +153,8 @@ impl Service {
                 candidates.push(candidate);
             }
         }
+        let limit = self.core.config.policy.limits.comparison.compression_max;
+        let candidates = ranking::press(candidates, pressure_gpa, limit)?;
         Ok(ranking::rank(candidates, &temperatures))
     }
 
@@ -198,6 +203,11 @@ impl Service {
             lattice_energy_kj_per_mol: record.summary.lattice_energy_kj_per_mol,
             zero_point_energy_kj_per_mol: report.zero_point_energy_kj_per_mol,
             free_energy: report.free_energy.clone(),
+            compression: Compression {
+                volume_ang3: report.crystal.volume_per_formula_unit_ang3,
+                compressibility_per_gpa: report.crystal.compressibility_per_gpa,
+            },
+            pressure: Ok(None),
         })
     }
 }
@@ -213,13 +223,13 @@ fn place(record: &RecordView) -> String {
 }
 
 /// Lower case, single blanks.
-fn normalised(text: &str) -> String {
+pub(super) fn normalised(text: &str) -> String {
     let words: Vec<String> = text.split_whitespace().map(str::to_lowercase).collect();
     words.join(" ")
 }
 
 /// The temperatures of a ranking, all on or between those of the grid.
-fn temperatures(wanted: Vec<f64>, grid: &[f64]) -> Result<Vec<f64>, Failure> {
+pub(super) fn temperatures(wanted: Vec<f64>, grid: &[f64]) -> Result<Vec<f64>, Failure> {
     if wanted.is_empty() {
         return Ok(STANDARD_TEMPERATURES_K.to_vec());
     }
@@ -285,6 +295,24 @@ impl v1::catalog_service_server::CatalogService for Service {
     ) -> Result<Response<v1::RankFormsResponse>, Status> {
         let tables = self.rank(request.into_inner()).await?;
         Ok(Response::new(v1::RankFormsResponse { tables }))
+    }
+
+    async fn get_series(
+        &self,
+        request: Request<v1::GetSeriesRequest>,
+    ) -> Result<Response<v1::GetSeriesResponse>, Status> {
+        let series = Some(self.series(request.into_inner().names).await?);
+        Ok(Response::new(v1::GetSeriesResponse { series }))
+    }
+
+    async fn get_quasi_harmonic(
+        &self,
+        request: Request<v1::GetQuasiHarmonicRequest>,
+    ) -> Result<Response<v1::GetQuasiHarmonicResponse>, Status> {
+        let quasi_harmonic = Some(self.quasi_harmonic(request.into_inner()).await?);
+        Ok(Response::new(v1::GetQuasiHarmonicResponse {
+            quasi_harmonic,
+        }))
     }
 }
 

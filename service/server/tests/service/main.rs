@@ -14,6 +14,7 @@ mod killed;
 mod lists;
 mod refusals;
 mod running;
+mod series;
 mod support;
 mod uploads;
 mod whole;

@@ -142,6 +142,7 @@ pub(crate) fn report(submission: &Submission, policy: &Policy, verdict: Verdict)
         free_energy_draws: Vec::new(),
         remedies: Vec::new(),
         curves: Curves::default(),
+        lowest_branches: Vec::new(),
     }
 }
 
