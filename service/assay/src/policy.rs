@@ -178,6 +178,8 @@ limits! {
 limits! {
     /// `[reach]`
     ReachLimits {
+        /// Of the largest distance.
+        outer_share: f64,
         /// Relative to the largest constant.
         decay_caution: f64,
         /// Relative to the largest constant.
@@ -212,6 +214,10 @@ limits! {
     SoftModeLimits {
         /// cm⁻¹, negative.
         wavenumber_per_cm: f64,
+        /// Standard deviations.
+        significant_z: f64,
+        /// Standard deviations.
+        significant_z_rounded: f64,
         /// Number of noise draws.
         noise_draws: usize,
     }

@@ -128,7 +128,7 @@ mod tests {
         );
         let near = SOFT.term(0.1, COMPRESSION_MAX).unwrap();
         assert!(
-            (near.elastic_kj_per_mol + 0.0564576).abs() < 1e-6,
+            (near.elastic_kj_per_mol + 0.056_457_6).abs() < 1e-6,
             "{near:?}"
         );
         assert!((near.sum_kj_per_mol() - (9.03321 - 0.05646)).abs() < 1e-4);

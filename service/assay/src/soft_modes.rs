@@ -18,11 +18,6 @@ use crate::workup::{Workup, eigen_error, lowest_wavenumber, show_q};
 /// Points of one cluster, as places in the reduced mesh.
 type Cluster = Vec<usize>;
 
-/// A mode is beyond its noise at this many standard deviations.
-const SIGNIFICANT_Z: f64 = 3.0;
-/// The same where values are rounded: their errors add coherently.
-const SIGNIFICANT_Z_ROUNDED: f64 = 5.0;
-
 /// All clusters, most negative first; clusters of the raw constants that vanish on projection last.
 pub(crate) fn soft_modes(
     workup: &Workup<'_>,
@@ -98,10 +93,11 @@ impl<'a> Evidence<'a> {
 
     /// How many standard deviations make a mode soft beyond noise.
     fn significant(&self) -> f64 {
+        let limits = &self.workup.limits.soft_modes;
         if self.workup.noise.summary.rounded {
-            SIGNIFICANT_Z_ROUNDED
+            limits.significant_z_rounded
         } else {
-            SIGNIFICANT_Z
+            limits.significant_z
         }
     }
 

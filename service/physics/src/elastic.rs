@@ -69,7 +69,7 @@ impl ElasticConstants {
 
 #[cfg(test)]
 mod tests {
-    use std::collections::BTreeMap;
+    use std::collections::BTreeSet;
 
     use nalgebra::Vector3;
 
@@ -115,7 +115,7 @@ mod tests {
 
     /// Half of a star of vectors in half edges: all permutations and signs, one of R and −R.
     fn half_star([x, y, z]: [i64; 3]) -> Vec<[i64; 3]> {
-        let mut star = BTreeMap::new();
+        let mut star = BTreeSet::new();
         for order in [
             [x, y, z],
             [y, z, x],
@@ -132,10 +132,10 @@ mod tests {
                         -order[a]
                     }
                 });
-                star.insert(image, ());
+                star.insert(image);
             }
         }
-        star.into_keys().filter(|image| *image > [0; 3]).collect()
+        star.into_iter().filter(|image| *image > [0; 3]).collect()
     }
 
     /// A monatomic cubic crystal with central springs; `primitive` rows and vectors in half edges.

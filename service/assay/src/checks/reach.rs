@@ -62,11 +62,9 @@ fn pairs<'a>(workup: &'a Workup<'_>) -> impl Iterator<Item = (f64, f64)> + 'a {
         })
 }
 
-/// Pairs beyond this share of the largest distance in the supercell are its outer part.
-const OUTER_SHARE: f64 = 0.8;
-
 fn reach(workup: &Workup<'_>) -> Finding {
     let all: Vec<(f64, f64)> = pairs(workup).collect();
+    let outer_share = workup.limits.reach.outer_share;
     let farthest = all.iter().map(|p| p.0).fold(0.0, f64::max);
     let largest = workup
         .projected
@@ -74,12 +72,12 @@ fn reach(workup: &Workup<'_>) -> Finding {
         .max(f64::MIN_POSITIVE);
     let outer = all
         .iter()
-        .filter(|p| p.0 >= OUTER_SHARE * farthest)
+        .filter(|p| p.0 >= outer_share * farthest)
         .map(|p| p.1)
         .fold(0.0, f64::max);
     let limits = Limit::caution_only(workup.limits.reach.decay_caution);
     Finding::graded(Rule::Reach, outer / largest, "", limits)
-        .at(format!("pairs beyond {:.1} Å", OUTER_SHARE * farthest))
+        .at(format!("pairs beyond {:.1} Å", outer_share * farthest))
         .saying(format!(
             "the largest constant in the outer part of the supercell is {outer:.1e} eV/Å², compared with the largest self \
              constant"

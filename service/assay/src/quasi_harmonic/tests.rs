@@ -64,9 +64,9 @@ fn exact(t: f64, pressure_gpa: f64) -> (f64, f64) {
     for _ in 0..60 {
         let middle = 0.5 * (low + high);
         if slope(middle, t) + pressure < 0.0 {
-            low = middle
+            low = middle;
         } else {
-            high = middle
+            high = middle;
         }
     }
     let bulk = low * (slope(low + 0.01, t) - slope(low - 0.01, t)) / 0.02;

@@ -241,7 +241,7 @@ fn is_same_geometry(a: &Crystal, b: &Crystal) -> bool {
 }
 
 fn number(setting: &'static str, value: Option<f64>, sense: Sense) -> Reading {
-    let text = value.map_or_else(|| UNDECLARED.to_owned(), |x| shown(x));
+    let text = value.map_or_else(|| UNDECLARED.to_owned(), shown);
     Reading {
         setting,
         text,

@@ -81,10 +81,13 @@ fn concluded(energies: &[(f64, f64)]) -> (Conclusion, String) {
     (series.conclusion, series.reason)
 }
 
+/// Values with their brackets, what follows, and a word of the reason.
+type Example = (&'static [(f64, f64)], Conclusion, &'static str);
+
 #[test]
 fn a_series_stops_only_after_two_small_changes_that_do_not_grow() {
     use Conclusion::{CannotBeTold, StillMoving, Stopped};
-    let cases: [(&[(f64, f64)], Conclusion, &str); 9] = [
+    let cases: [Example; 9] = [
         (
             &[(5.0, 0.1), (4.90, 0.1), (4.85, 0.1)],
             Stopped,

@@ -109,7 +109,11 @@ async fn a_displacement_series_is_ordered_and_judged() {
     assert_eq!(found.settings[0].setting, "displacement_angstrom");
     assert_eq!(found.settings[0].values, ["0.04", "0.02", "0.01"]);
     assert_eq!(found.conclusion(), v1::SeriesConclusion::Stopped);
-    let kinds: Vec<v1::SeriesQuantityKind> = found.quantities.iter().map(|q| q.kind()).collect();
+    let kinds: Vec<v1::SeriesQuantityKind> = found
+        .quantities
+        .iter()
+        .map(v1::SeriesQuantity::kind)
+        .collect();
     assert_eq!(
         kinds,
         [
