@@ -269,8 +269,8 @@ struct PolarCrystal {
 
 impl PolarCrystal {
     /// Springs to neighbours nearer than `reach_ang`, stiffer the nearer, and sideways a fifth as stiff.
-    fn new(crystal: Crystal, charges: &EffectiveCharges, reach_ang: f64, stiffness: f64) -> Self {
-        let dipoles = Arc::new(Dipoles::new(&crystal, charges).unwrap());
+    fn new(crystal: &Crystal, charges: &EffectiveCharges, reach_ang: f64, stiffness: f64) -> Self {
+        let dipoles = Arc::new(Dipoles::new(crystal, charges).unwrap());
         let mut springs = SpringCrystal::new(crystal.clone());
         let x = crystal.positions();
         for (i, j) in (0..x.len()).flat_map(|i| (0..x.len()).map(move |j| (i, j))) {
@@ -335,11 +335,11 @@ impl PolarCrystal {
 
 fn skew_polar() -> PolarCrystal {
     let (crystal, charges) = skew();
-    PolarCrystal::new(crystal, &charges, 4.0, 6.0)
+    PolarCrystal::new(&crystal, &charges, 4.0, 6.0)
 }
 
 fn rock_salt_polar(permittivity: f64) -> PolarCrystal {
-    PolarCrystal::new(rock_salt(), &rigid(&[1.1, -1.1], permittivity), 4.1, 3.0)
+    PolarCrystal::new(&rock_salt(), &rigid(&[1.1, -1.1], permittivity), 4.1, 3.0)
 }
 
 #[test]
