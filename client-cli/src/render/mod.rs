@@ -4,6 +4,7 @@ pub mod failure;
 pub mod lists;
 pub mod numbers;
 pub mod rank;
+pub mod remedies;
 pub mod report;
 pub mod series;
 pub mod soft_modes;

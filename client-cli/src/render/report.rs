@@ -3,10 +3,10 @@
 use tarehouse_proto::v1::{CrystalFacts, Finding, FreeEnergy, Noise, Report, Severity, Verdict};
 
 use super::numbers::{counted, quantity, temperature, with_unit};
-use super::soft_modes;
 use super::table::{Kind, Table, aligned};
 use super::text::{Page, Style, View, clean};
 use super::words;
+use super::{remedies, soft_modes};
 
 /// Temperatures shown where the report has them, K.
 const TEMPERATURES_SHOWN_K: [f64; 6] = [0.0, 100.0, 200.0, 300.0, 400.0, 500.0];
@@ -37,6 +37,7 @@ pub fn to_text(report: &Report, subject: &Subject, show_all: bool, view: View) -
     write_findings(&mut page, &report.findings, show_all);
     soft_modes::write(&mut page, &report.soft_modes, show_all);
     write_free_energy(&mut page, report, show_all);
+    remedies::write(&mut page, &report.remedies, report.bracket_parts.as_ref());
     write_facts(&mut page, report);
     page.finish()
 }

@@ -82,7 +82,7 @@ fn evidence(cluster: &SoftMode) -> String {
         parts.push(format!("z = {}", quantity(z)));
     }
     if let Some(share) = cluster.alias_share {
-        parts.push(format!("alias share {}", quantity(share)));
+        parts.push(format!("aliasing {} of its depth", quantity(share)));
     }
     parts.push(format!(
         "rigid-molecule motion {:.0} %",

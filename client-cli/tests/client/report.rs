@@ -3,8 +3,8 @@
 use tarehouse_client::render::report::{LEFT_OUT, Subject, to_text};
 use tarehouse_client::render::text::{View, visible_width};
 use tarehouse_proto::v1::{
-    CrystalFacts, Finding, FreeEnergy, LikelyCause, Mesh, Noise, Report, Severity, SoftMode,
-    SoftModeTag, Strength, TruncationChange, Verdict,
+    BracketParts, CrystalFacts, Finding, FreeEnergy, LikelyCause, Mesh, Noise, Remedy, Report,
+    Severity, SoftMode, SoftModeTag, Strength, TruncationChange, Verdict,
 };
 
 fn finding(rule: &str, severity: Severity, cause: LikelyCause) -> Finding {
@@ -83,9 +83,24 @@ fn report() -> Report {
             ..Noise::default()
         }),
         soft_modes: vec![cluster()],
-        bracket_parts: None,
+        bracket_parts: Some(BracketParts {
+            noise_kj_per_mol: 0.5,
+            alias_kj_per_mol: 1.25,
+            ..BracketParts::default()
+        }),
         free_energy_draws: Vec::new(),
-        remedies: Vec::new(),
+        remedies: vec![
+            Remedy {
+                setting: "constants.supercell".to_owned(),
+                advice: "double the supercell".to_owned(),
+                effect_kj_per_mol: Some(1.25),
+            },
+            Remedy {
+                setting: "masses".to_owned(),
+                advice: "check the masses".to_owned(),
+                effect_kj_per_mol: None,
+            },
+        ],
         mesh: Some(Mesh {
             divisions: vec![6, 4, 6],
             point_count: 144,
@@ -197,7 +212,7 @@ fn a_cluster_shows_tag_strength_and_evidence() {
             "12.3i cm⁻¹ at q = (1/2, 0, 0): possibly physical, strong",
             "far below zero",
             "z = -8.25",
-            "alias share 0.02",
+            "aliasing 0.02 of its depth",
             "rigid-molecule motion 97 %",
             "13.0i cm⁻¹ before projection",
             "4.0 cm⁻¹ without constants below 1e-3 of the largest",
@@ -321,4 +336,19 @@ fn colour_changes_nothing_but_colour() {
         }
     }
     assert_eq!(plain, shown(&report(), false, 80));
+}
+
+#[test]
+fn what_to_do_next_comes_in_order_with_its_effect() {
+    let text = shown(&report(), false, 100);
+    let found = places(
+        &text,
+        &[
+            "What to do next",
+            "1. constants.supercell: double the supercell (up to 1.25 kJ/mol of the half width)",
+            "2. masses: check the masses",
+            "aliasing 1.25",
+        ],
+    );
+    assert!(found.is_sorted(), "{text}");
 }

@@ -92,7 +92,7 @@ pub(crate) fn soft_mode_finding(soft_modes: &[SoftMode]) -> Finding {
     Finding::new(
         Rule::SoftModes,
         Severity::Caution,
-        format!("{count} {clusters} of soft modes, see soft_modes"),
+        format!("{count} {clusters} of soft modes on the mesh"),
     )
     .measured(lowest, Some(0.0), "cm⁻¹")
     .because(cause, remedy)

@@ -5,3 +5,5 @@
 
 #[cfg(test)]
 mod cases;
+#[cfg(test)]
+mod polar;
