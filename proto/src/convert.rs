@@ -38,7 +38,4 @@ pub enum ConvertError {
         /// Entries found.
         found: usize,
     },
-    /// More distinct units or families than any program makes.
-    #[error("{0}: too many different words, or too long a word")]
-    Vocabulary(&'static str),
 }

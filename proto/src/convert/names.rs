@@ -1,8 +1,5 @@
 //! Names, digests and the enums that stand one to one.
 
-use std::collections::BTreeSet;
-use std::sync::{Mutex, PoisonError};
-
 use tarehouse_assay::report::{LikelyCause, Rule, Severity, Strength, Tag, Verdict};
 use tarehouse_assay::submission::{CellProtocol, Digest};
 
@@ -77,29 +74,6 @@ pub fn digest_from_hex(text: &str) -> Option<Digest> {
         *byte = nibble(*high)? << 4 | nibble(*low)?;
     }
     Some(digest)
-}
-
-/// Most distinct words that are kept, and the longest of them, bytes.
-const WORDS_MAX: usize = 256;
-const WORD_BYTES_MAX: usize = 64;
-
-/// The domain's words for units and families are part of the program; read back from a message they are found here or,
-/// where a later program wrote them, kept for the life of the process. The bound makes that harmless.
-pub(super) fn vocabulary(word: &str, field: &'static str) -> Result<&'static str, ConvertError> {
-    static WORDS: Mutex<BTreeSet<&'static str>> = Mutex::new(BTreeSet::new());
-    if word.is_empty() {
-        return Ok("");
-    }
-    let mut words = WORDS.lock().unwrap_or_else(PoisonError::into_inner);
-    if let Some(known) = words.get(word) {
-        return Ok(known);
-    }
-    if words.len() >= WORDS_MAX || word.len() > WORD_BYTES_MAX {
-        return Err(ConvertError::Vocabulary(field));
-    }
-    let kept: &'static str = Box::leak(word.to_owned().into_boxed_str());
-    words.insert(kept);
-    Ok(kept)
 }
 
 /// Enums of the domain and of the wire that stand one to one. The wire's `Unspecified` has no partner.

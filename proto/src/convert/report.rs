@@ -7,7 +7,7 @@ use tarehouse_assay::report::{
 use tarehouse_assay::submission::Digest;
 
 use super::ConvertError;
-use super::names::{digest_from_hex, digest_to_hex, rule_by_name, vocabulary};
+use super::names::{digest_from_hex, digest_to_hex, rule_by_name};
 use crate::v1;
 
 /// Number of an enum of the wire.
@@ -94,7 +94,7 @@ impl TryFrom<v1::Report> for Report {
             verdict: known::<v1::Verdict, _>("verdict", report.verdict)?,
             verdict_reasons: report.verdict_reasons,
             findings: each(report.findings)?,
-            noise: report.noise.ok_or(missing("noise"))?.try_into()?,
+            noise: report.noise.ok_or(missing("noise"))?.into(),
             soft_modes: each(report.soft_modes)?,
             mesh: report.mesh.ok_or(missing("mesh"))?.try_into()?,
             crystal: report.crystal.ok_or(missing("crystal"))?.try_into()?,
@@ -120,7 +120,7 @@ impl From<Finding> for v1::Finding {
             severity: number::<v1::Severity>(finding.severity),
             measured: finding.measured,
             limit: finding.limit,
-            unit: finding.unit.to_owned(),
+            unit: finding.unit,
             location: finding.location,
             likely_cause: number::<v1::LikelyCause>(finding.likely_cause),
             message: finding.message,
@@ -138,46 +138,11 @@ impl TryFrom<v1::Finding> for Finding {
             severity: known::<v1::Severity, _>("severity", finding.severity)?,
             measured: finding.measured,
             limit: finding.limit,
-            unit: vocabulary(&finding.unit, "unit")?,
+            unit: finding.unit,
             location: finding.location,
             likely_cause: known::<v1::LikelyCause, _>("likely_cause", finding.likely_cause)?,
             message: finding.message,
             remedy: finding.remedy,
-        })
-    }
-}
-
-impl From<Noise> for v1::Noise {
-    fn from(noise: Noise) -> Self {
-        Self {
-            sigma_ev_per_ang2: noise.sigma_ev_per_ang2,
-            bound_only: noise.bound_only,
-            erased: noise.erased.into_iter().map(str::to_owned).collect(),
-            truncated: noise.truncated,
-            self_fixed: noise.self_fixed,
-            symmetry_expanded: noise.symmetry_expanded,
-            rounded: noise.rounded,
-        }
-    }
-}
-
-impl TryFrom<v1::Noise> for Noise {
-    type Error = ConvertError;
-
-    fn try_from(noise: v1::Noise) -> Result<Self, ConvertError> {
-        let erased: Result<Vec<&'static str>, ConvertError> = noise
-            .erased
-            .iter()
-            .map(|word| vocabulary(word, "erased"))
-            .collect();
-        Ok(Self {
-            sigma_ev_per_ang2: noise.sigma_ev_per_ang2,
-            bound_only: noise.bound_only,
-            erased: erased?,
-            truncated: noise.truncated,
-            self_fixed: noise.self_fixed,
-            symmetry_expanded: noise.symmetry_expanded,
-            rounded: noise.rounded,
         })
     }
 }
@@ -293,49 +258,42 @@ macro_rules! alike {
     };
 }
 
-alike! { TruncationChange { fraction, wavenumber_per_cm, } }
-impl From<CrystalFacts> for v1::CrystalFacts {
-    fn from(facts: CrystalFacts) -> Self {
-        Self {
-            space_group_number: facts.space_group_number,
-            space_group_symbol: facts.space_group_symbol,
-            volume_per_formula_unit_ang3: facts.volume_per_formula_unit_ang3,
-            density_g_per_cm3: facts.density_g_per_cm3,
-            molecule_count: facts.molecule_count,
-            sound_velocity_min_m_per_s: facts.sound_velocity_min_m_per_s,
-            sound_velocity_max_m_per_s: facts.sound_velocity_max_m_per_s,
-            projection_relative_norm: facts.projection_relative_norm,
-            projection_largest_ev_per_ang2: facts.projection_largest_ev_per_ang2,
-            projection_free_energy_kj_per_mol: facts.projection_free_energy_kj_per_mol,
-            lattice_energy_kj_per_mol: facts.lattice_energy_kj_per_mol,
-            polar_modes: every(facts.polar_modes),
-            compressibility_per_gpa: facts.compressibility_per_gpa,
+/// The same, with lists of messages that have a conversion of their own.
+macro_rules! alike_with_lists {
+    ($name:ident { $($field:ident,)+ } lists { $($list:ident,)+ }) => {
+        impl From<$name> for v1::$name {
+            fn from(value: $name) -> Self {
+                let $name { $($field,)+ $($list,)+ } = value;
+                Self { $($field,)+ $($list: every($list),)+ }
+            }
         }
-    }
+
+        impl TryFrom<v1::$name> for $name {
+            type Error = ConvertError;
+
+            fn try_from(value: v1::$name) -> Result<Self, ConvertError> {
+                let v1::$name { $($field,)+ $($list,)+ } = value;
+                Ok(Self { $($field,)+ $($list: each($list)?,)+ })
+            }
+        }
+    };
 }
 
-impl TryFrom<v1::CrystalFacts> for CrystalFacts {
-    type Error = ConvertError;
-
-    fn try_from(facts: v1::CrystalFacts) -> Result<Self, ConvertError> {
-        Ok(Self {
-            space_group_number: facts.space_group_number,
-            space_group_symbol: facts.space_group_symbol,
-            volume_per_formula_unit_ang3: facts.volume_per_formula_unit_ang3,
-            density_g_per_cm3: facts.density_g_per_cm3,
-            molecule_count: facts.molecule_count,
-            sound_velocity_min_m_per_s: facts.sound_velocity_min_m_per_s,
-            sound_velocity_max_m_per_s: facts.sound_velocity_max_m_per_s,
-            projection_relative_norm: facts.projection_relative_norm,
-            projection_largest_ev_per_ang2: facts.projection_largest_ev_per_ang2,
-            projection_free_energy_kj_per_mol: facts.projection_free_energy_kj_per_mol,
-            lattice_energy_kj_per_mol: facts.lattice_energy_kj_per_mol,
-            polar_modes: each(facts.polar_modes)?,
-            compressibility_per_gpa: facts.compressibility_per_gpa,
-        })
-    }
-}
-
+alike! { TruncationChange { fraction, wavenumber_per_cm, } }
+alike_with_lists! { CrystalFacts {
+    space_group_number,
+    space_group_symbol,
+    volume_per_formula_unit_ang3,
+    density_g_per_cm3,
+    molecule_count,
+    sound_velocity_min_m_per_s,
+    sound_velocity_max_m_per_s,
+    projection_relative_norm,
+    projection_largest_ev_per_ang2,
+    projection_free_energy_kj_per_mol,
+    lattice_energy_kj_per_mol,
+    compressibility_per_gpa,
+} lists { polar_modes, } }
 impl From<PolarModes> for v1::PolarModes {
     fn from(modes: PolarModes) -> Self {
         Self {
@@ -365,6 +323,15 @@ alike! { FreeEnergy {
     internal_energy_kj_per_mol,
     entropy_j_per_mol_k,
     heat_capacity_j_per_mol_k,
+} }
+alike! { Noise {
+    sigma_ev_per_ang2,
+    bound_only,
+    erased,
+    truncated,
+    self_fixed,
+    symmetry_expanded,
+    rounded,
 } }
 alike! { BracketParts {
     noise_kj_per_mol,

@@ -19,7 +19,7 @@ impl Finding {
             severity,
             measured: None,
             limit: None,
-            unit: "",
+            unit: String::new(),
             location: String::new(),
             likely_cause: LikelyCause::None,
             message: message.into(),
@@ -29,21 +29,21 @@ impl Finding {
 
     /// A finding of a measured value held against a caution and a fail limit; the limit shown is the one that was passed,
     /// or the next one that was not.
-    pub(crate) fn graded(rule: Rule, measured: f64, unit: &'static str, limits: Limit) -> Self {
+    pub(crate) fn graded(rule: Rule, measured: f64, unit: &str, limits: Limit) -> Self {
         let (severity, limit) = limits.judge(measured);
         Self {
             measured: Some(measured),
             limit: Some(limit),
-            unit,
+            unit: unit.to_owned(),
             ..Self::new(rule, severity, String::new())
         }
     }
 
-    pub(crate) fn measured(self, measured: f64, limit: Option<f64>, unit: &'static str) -> Self {
+    pub(crate) fn measured(self, measured: f64, limit: Option<f64>, unit: &str) -> Self {
         Self {
             measured: Some(measured),
             limit,
-            unit,
+            unit: unit.to_owned(),
             ..self
         }
     }

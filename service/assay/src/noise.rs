@@ -28,6 +28,8 @@ use crate::submission::{Digest, Displaced, Submission};
 pub(crate) struct NoiseModel {
     /// For the report.
     pub(crate) summary: Noise,
+    /// Families enforced before submission, with the σ that is left of each, eV/Å².
+    pub(crate) erased: Vec<(&'static str, f64)>,
     seed: Digest,
     pattern: Pattern,
 }
@@ -70,11 +72,12 @@ impl NoiseModel {
             };
             lost * farthest_rms(constants, crystal, images)
         });
+        let erased = families.erased();
         let summary = Noise {
             // Whatever the asymmetry shows: small constants that round to zero on both sides hide their error.
             sigma_ev_per_ang2: sigma.max(quantum.map_or(0.0, pattern::rounding_deviation)),
             bound_only: direct.is_none(),
-            erased: families.erased(),
+            erased: erased.iter().map(|(name, _)| (*name).to_owned()).collect(),
             truncated: families.is_live(TRANSLATION_SUM)
                 && !families.is_live(PAIR_SYMMETRY)
                 && !families.is_live(SPACE_GROUP),
@@ -84,6 +87,7 @@ impl NoiseModel {
         };
         Self {
             summary,
+            erased,
             seed,
             pattern,
         }

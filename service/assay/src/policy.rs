@@ -130,6 +130,8 @@ limits! {
         alternative_gain: f64,
         /// From −1 to 1.
         lean_max: f64,
+        /// Å.
+        moved_angstrom: f64,
     }
 }
 
@@ -238,6 +240,8 @@ limits! {
         residual_force_undeclared_ev_per_angstrom: f64,
         /// kJ/mol per molecule.
         floor_kj_per_mol: f64,
+        /// Of the half width.
+        remedy_share: f64,
         /// Number of joint draws stored.
         joint_draws: usize,
         /// kJ/mol per formula unit.

@@ -9,9 +9,6 @@ use crate::report::{
 use crate::submission::{Differences, Scheme};
 use crate::workup::Workup;
 
-/// Parts of the bracket below this share of it are not worth a remedy.
-const WORTH_SHARE: f64 = 0.1;
-
 /// All remedies, largest effect first; those that are not a matter of width come last, in the order of the findings.
 pub(crate) fn remedies(
     workup: &Workup<'_>,
@@ -23,7 +20,7 @@ pub(crate) fn remedies(
     if let Some(parts) = parts {
         let width = parts.half_width_kj_per_mol();
         let floor = parts.floor_kj_per_mol;
-        let worth = |part: f64| part > WORTH_SHARE * width && part > floor;
+        let worth = |part: f64| part > workup.limits.bracket.remedy_share * width && part > floor;
         let noise = parts.noise_kj_per_mol + parts.bias_kj_per_mol;
         if worth(noise) {
             remedies.push(against_noise(workup, noise));
@@ -91,12 +88,17 @@ fn against_noise(workup: &Workup<'_>, effect: f64) -> Remedy {
     let least_step = policy
         .and_then(|p| p.displacement_angstrom)
         .map(|range| range[0]);
+    let least_bits = policy.and_then(|p| p.float_bits_min);
     let (setting, advice) = if workup.noise.summary.rounded {
         (
             "forces",
             "write forces with all their digits: the constants are multiples of one quantum",
         )
-    } else if settings.float_bits.is_some_and(|bits| bits < 64) {
+    } else if settings
+        .float_bits
+        .zip(least_bits)
+        .is_some_and(|(bits, least)| bits < least)
+    {
         ("settings.float_bits", "compute forces in double precision")
     } else if settings.differences == Some(Differences::Forward) {
         (

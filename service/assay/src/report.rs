@@ -93,7 +93,7 @@ pub struct Finding {
     /// The policy's limit that `measured` was held against, in `unit`.
     pub limit: Option<f64>,
     /// Unit of both; empty for a pure number.
-    pub unit: &'static str,
+    pub unit: String,
     /// Where: atoms, wave vector, key of the package.
     pub location: String,
     /// The likeliest cause.
@@ -276,7 +276,7 @@ pub struct Noise {
     /// `sigma` is an upper bound only.
     pub bound_only: bool,
     /// Families whose evidence is gone.
-    pub erased: Vec<&'static str>,
+    pub erased: Vec<String>,
     /// The constants look cut off at a distance.
     pub truncated: bool,
     /// The self block was set to minus the row sum.

@@ -77,7 +77,10 @@ impl Supercell {
         }
         let mut by_residue = HashMap::with_capacity(translations.len());
         for (second, translation) in translations.iter().enumerate() {
-            if translation.iter().any(|x| x.abs() > ELEMENT_MAX) {
+            if translation
+                .iter()
+                .any(|x| x.unsigned_abs() > ELEMENT_MAX.unsigned_abs())
+            {
                 errors.push(SupercellError::TooLarge {
                     cells: u64::MAX,
                     limit: CELLS_MAX,

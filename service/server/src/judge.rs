@@ -145,7 +145,7 @@ pub(crate) fn failed_report(package_digest: Digest, policy: &Policy, attempts: u
             severity: Severity::Fail,
             measured: Some(f64::from(attempts)),
             limit: None,
-            unit: "attempts",
+            unit: "attempts".to_owned(),
             location: String::new(),
             likely_cause: LikelyCause::Unknown,
             message,

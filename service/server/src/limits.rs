@@ -16,6 +16,8 @@ pub const PAGE_SIZE_DEFAULT: u32 = limits::PAGE_SIZE_DEFAULT;
 pub const TEMPERATURES_MAX: usize = narrow(limits::TEMPERATURES.max) as usize;
 /// Members of one series.
 pub const SERIES_MEMBERS_MAX: usize = 64;
+/// Largest pressure that a request may name, GPa.
+pub const PRESSURE_MAX_GPA: f64 = 1000.0;
 /// Pressures of one request.
 pub const PRESSURES_MAX: usize = 64;
 /// Arrays of one submission.

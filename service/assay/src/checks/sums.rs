@@ -215,28 +215,22 @@ fn enforced(workup: &Workup<'_>) -> Vec<Finding> {
         }
         _ => "the space group was enforced before submission",
     };
-    if noise.erased.is_empty() {
+    if workup.noise.erased.is_empty() {
         let message = "no condition was enforced before submission: the constants are raw";
         return vec![Finding::new(Rule::Enforced, Severity::Pass, message)];
     }
-    noise
-        .erased
-        .iter()
-        .map(|family| {
-            let expected = *family == SPACE_GROUP && noise.symmetry_expanded;
-            let severity = if expected {
-                Severity::Pass
-            } else {
-                Severity::Caution
-            };
-            Finding::new(
-                Rule::Enforced,
-                severity,
-                format!("{}: the evidence of its noise is gone", words(family)),
-            )
-            .measured(0.0, Some(limit), "of the rms constant")
+    let finding = |(family, sigma): &(&'static str, f64)| {
+        let expected = *family == SPACE_GROUP && noise.symmetry_expanded;
+        let severity = if expected {
+            Severity::Pass
+        } else {
+            Severity::Caution
+        };
+        let message = format!("{}: the evidence of its noise is gone", words(family));
+        Finding::new(Rule::Enforced, severity, message)
+            .measured(sigma / scale, Some(limit), "of the rms constant")
             .at(format!("{family}, rms constant {scale:.2e} eV/Å²"))
             .because(LikelyCause::EvidenceErased, "submit raw constants")
-        })
-        .collect()
+    };
+    workup.noise.erased.iter().map(finding).collect()
 }

@@ -45,9 +45,12 @@ impl Families {
             .any(|f| f.name == name && f.sigma() >= self.erased_below)
     }
 
-    pub(super) fn erased(&self) -> Vec<&'static str> {
-        let erased = self.speaking().filter(|f| f.sigma() < self.erased_below);
-        erased.map(|f| f.name).collect()
+    /// The families that were enforced before submission, each with the σ that is left of it, eV/Å².
+    pub(super) fn erased(&self) -> Vec<(&'static str, f64)> {
+        let families = self.speaking().map(|f| (f.name, f.sigma()));
+        families
+            .filter(|(_, sigma)| *sigma < self.erased_below)
+            .collect()
     }
 
     /// The largest σ of the live families; `None` where all were erased.

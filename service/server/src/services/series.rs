@@ -14,9 +14,6 @@ use crate::failure::{Breach, Failure, reason};
 use crate::names::Resource;
 use crate::{limits, series_wire};
 
-/// Largest pressure that is taken, GPa: far beyond any molecular crystal.
-const PRESSURE_MAX_GPA: f64 = 1000.0;
-
 /// What is stored of one member.
 struct Examined {
     name: String,
@@ -333,9 +330,12 @@ fn pressures(wanted: Vec<f64>) -> Result<Vec<f64>, Failure> {
 
 /// A pressure from 0 to the largest taken, GPa.
 pub(super) fn pressure(field: &str, pressure_gpa: f64) -> Result<f64, Failure> {
-    if (0.0..=PRESSURE_MAX_GPA).contains(&pressure_gpa) {
+    if (0.0..=limits::PRESSURE_MAX_GPA).contains(&pressure_gpa) {
         return Ok(pressure_gpa);
     }
-    let message = format!("{pressure_gpa} GPa is not within 0 to {PRESSURE_MAX_GPA} GPa");
+    let message = format!(
+        "{pressure_gpa} GPa is not within 0 to {} GPa",
+        limits::PRESSURE_MAX_GPA
+    );
     Err(Failure::field(field, message))
 }

@@ -121,7 +121,7 @@ pub(crate) fn report(submission: &Submission, policy: &Policy, verdict: Verdict)
             severity: Severity::Caution,
             measured: Some(1.5),
             limit: Some(1.0),
-            unit: "g/cm^3",
+            unit: "g/cm^3".to_owned(),
             location: String::new(),
             likely_cause: LikelyCause::Unknown,
             message: "Invented.".to_owned(),

@@ -201,24 +201,22 @@ fn is_along(bond: &Bond, reading: &Arrangement<'_>, limits: &BlunderLimits) -> b
 
 /// How far the array leans towards another reading, −1 to 1:
 /// Σ|Φ|(d − d')/Σ|Φ||d − d'|, with d the distance of each block as given and d' in the other reading, over the blocks that
-/// the other reading moves by more than [`MOVED_ANG`]. Blocks that both readings leave in place say nothing.
+/// the other reading moves by more than the policy's `moved_angstrom`. Blocks that both readings leave in place say nothing.
 fn lean(workup: &Workup<'_>, other_distance: impl Fn(usize, usize, usize) -> f64) -> f64 {
     let raw = &workup.submission.constants;
     let n = raw.atom_count();
+    let least = workup.limits.blunders.moved_angstrom;
     let (mut towards, mut total) = (0.0, 0.0);
     for (flat, block) in raw.blocks().iter().enumerate() {
         let (l, i, j) = (flat / (n * n), flat / n % n, flat % n);
         let moved = workup.images.distance(&workup.crystal, l, i, j) - other_distance(l, i, j);
-        if moved.abs() > MOVED_ANG {
+        if moved.abs() > least {
             towards += block.norm() * moved;
             total += block.norm() * moved.abs();
         }
     }
     if total > 0.0 { towards / total } else { 0.0 }
 }
-
-/// Blocks that another reading moves by less than this are not counted, Å.
-const MOVED_ANG: f64 = 0.3;
 
 /// How far the array leans towards translations with the opposite sign: the same thing as a swapped index order.
 pub(super) fn lean_mirrored(workup: &Workup<'_>) -> f64 {
