@@ -84,7 +84,8 @@ pub fn examine(
     progress.advance("structure and constants", 1, 1);
     let spectra = spectra::spectra(&workup, progress)?;
     progress.advance("judgement", 0, 1);
-    let soft_modes = soft_modes::soft_modes(&workup, &spectra)?;
+    let truncated = soft_modes::truncated_dynamics(&workup);
+    let soft_modes = soft_modes::soft_modes(&workup, &spectra, &truncated)?;
     let defined = soft_modes
         .iter()
         .all(|mode| mode.tag == report::Tag::Numerical);
@@ -97,10 +98,7 @@ pub fn examine(
     findings.extend(checks::blunders::check(&workup));
     findings.extend(checks::sums::check(&workup));
     findings.extend(checks::acoustic::check(&workup, &facts));
-    findings.extend(checks::reach::check(
-        &workup,
-        &soft_modes::truncated_dynamics(&workup),
-    )?);
+    findings.extend(checks::reach::check(&workup, &truncated)?);
     findings.extend(checks::settings::check(&workup));
     findings.extend(checks::claims::check(&workup, &free_energy));
     findings.extend(checks::long_range::check(&workup));

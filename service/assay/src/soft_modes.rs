@@ -22,13 +22,13 @@ type Cluster = Vec<usize>;
 pub(crate) fn soft_modes(
     workup: &Workup<'_>,
     spectra: &[PointSpectrum],
+    truncated: &[(f64, Dynamics)],
 ) -> Result<Vec<SoftMode>, ExamineError> {
     let neighbours = neighbours(&workup.mesh);
     let is_soft = |point: usize| !spectra[point].soft.is_empty();
     let mut modes = Vec::new();
-    let truncated = truncated_dynamics(workup);
     for cluster in clusters(&neighbours, spectra.len(), is_soft) {
-        modes.push(tagged(workup, spectra, &truncated, &cluster)?);
+        modes.push(tagged(workup, spectra, truncated, &cluster)?);
     }
     modes.sort_by(|a, b| {
         a.lowest_wavenumber_per_cm

@@ -8,6 +8,7 @@ use nalgebra::{Matrix3, Vector3};
 use rayon::prelude::*;
 
 use crate::crystal::Crystal;
+use crate::reduction::short_basis;
 use crate::supercell::Supercell;
 
 /// A lattice translation R in the primitive basis, with R ≡ R_l modulo the supercell.
@@ -23,7 +24,7 @@ pub struct PairImages {
 
 /// Images tried on each side along each axis of the reduced supercell basis.
 ///
-/// In a Minkowski-reduced basis the nearest lattice point to any point is within one step of the rounded coordinates;
+/// In a reduced basis the nearest lattice point to any point is within one step of the rounded coordinates;
 /// the second step is margin for ties at the border.
 const SEARCH_STEPS: i32 = 2;
 
@@ -162,7 +163,7 @@ pub fn shortest_supercell_vector_ang(crystal: &Crystal, supercell: &Supercell) -
 struct ImageSearch<'a> {
     crystal: &'a Crystal,
     supercell: &'a Supercell,
-    /// Rows: a Minkowski-reduced basis of the supercell lattice in primitive coordinates.
+    /// Rows: short vectors of the supercell lattice in primitive coordinates.
     reduced: Matrix3<f64>,
     to_reduced: Matrix3<f64>,
     /// Supercell translations within [`SEARCH_STEPS`], in primitive coordinates and in Å.
@@ -170,18 +171,10 @@ struct ImageSearch<'a> {
 }
 
 impl<'a> ImageSearch<'a> {
-    /// Prepares the search: reduces the supercell lattice (Minkowski; Nguyen & Stehlé, ACM Trans. Algorithms 5, 46
-    /// (2009)).
+    /// Prepares the search: reduces the supercell lattice.
     fn new(crystal: &'a Crystal, supercell: &'a Supercell) -> Self {
-        let vectors = supercell.vectors(crystal.cell());
-        let transform = moyo::base::Lattice::new(vectors)
-            .minkowski_reduce()
-            .map_or_else(
-                |_| Matrix3::identity(),
-                |(_, transform)| transform.map(f64::from),
-            );
-        // The library keeps lattice vectors as columns, reduced = basis · transform; ours are rows.
-        let reduced = transform.transpose() * supercell.matrix_f64();
+        let short = short_basis(&supercell.vectors(crystal.cell()));
+        let reduced = short.map(f64::from) * supercell.matrix_f64();
         let to_reduced = reduced.try_inverse().unwrap_or_else(Matrix3::identity);
         let axis = -SEARCH_STEPS..=SEARCH_STEPS;
         let mut steps = Vec::new();

@@ -17,6 +17,7 @@ pub mod long_wave;
 pub mod molecules;
 pub mod projection;
 pub mod qmesh;
+mod reduction;
 pub mod supercell;
 pub mod symmetry;
 pub mod thermodynamics;

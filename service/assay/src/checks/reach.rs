@@ -1,6 +1,8 @@
 //! Whether the supercell holds the range of the forces: decay of |Φ| with distance, the supercell against the molecules,
 //! and the change of the lowest branches when small constants are dropped.
 
+use nalgebra::Vector3;
+use rayon::prelude::*;
 use tarehouse_physics::dynamics::Dynamics;
 use tarehouse_physics::units::wavenumber_per_cm;
 
@@ -111,31 +113,29 @@ fn supercell_size(workup: &Workup<'_>) -> Finding {
 }
 
 fn truncation(workup: &Workup<'_>, truncated: &[(f64, Dynamics)]) -> Result<Finding, ExamineError> {
-    let failed = eigen_error("truncation");
     let judged = workup.limits.reach.truncation_judged_fraction;
     let mut points = workup.projected.supercell().commensurate_points();
     if points.len() > 1 {
         // Γ's lowest modes are the rigid translations, which no truncation moves.
         points.retain(|q| q.norm() > 0.0);
     }
-    let branch = |q: &nalgebra::Vector3<f64>| if q.norm() > 0.0 { 0 } else { 3 };
+    let shifts = points
+        .par_iter()
+        .map(|q| lowest_branch_shifts(workup, truncated, q))
+        .collect::<Result<Vec<Vec<f64>>, _>>()?;
     let mut words = Vec::new();
     let (mut worst, mut place) = (0.0_f64, String::new());
-    for (fraction, dynamics) in truncated {
-        let mut largest = 0.0_f64;
-        for q in &points {
-            let full = workup.dynamics.eigenvalues(q).map_err(&failed)?;
-            let cut = dynamics.eigenvalues(q).map_err(&failed)?;
-            let lowest = |values: &[f64]| {
-                wavenumber_per_cm(values.get(branch(q)).copied().unwrap_or_default())
-            };
-            let shift = (lowest(&cut) - lowest(&full)).abs();
-            largest = largest.max(shift);
-            if *fraction <= judged && shift > worst {
-                (worst, place) = (shift, show_q(q));
+    for (k, (fraction, _)) in truncated.iter().enumerate() {
+        let largest = shifts
+            .iter()
+            .map(|at_point| at_point[k])
+            .fold(0.0, f64::max);
+        words.push(format!("{largest:.1} cm⁻¹ at {fraction:.0e}"));
+        for (q, at_point) in points.iter().zip(&shifts) {
+            if *fraction <= judged && at_point[k] > worst {
+                (worst, place) = (at_point[k], show_q(q));
             }
         }
-        words.push(format!("{largest:.1} cm⁻¹ at {fraction:.0e}"));
     }
     let limits = Limit::caution_only(workup.limits.reach.truncation_caution_per_cm);
     Ok(Finding::graded(Rule::Truncation, worst, "cm⁻¹", limits)
@@ -148,4 +148,24 @@ fn truncation(workup: &Workup<'_>, truncated: &[(f64, Dynamics)]) -> Result<Find
             LikelyCause::SmallSupercell,
             "the soft branches rest on very small constants: these must be accurate, so tighten the SCF and the grid",
         ))
+}
+
+/// How far each truncation moves the lowest branch at q, cm⁻¹; at Γ the lowest beyond the rigid translations.
+fn lowest_branch_shifts(
+    workup: &Workup<'_>,
+    truncated: &[(f64, Dynamics)],
+    q: &Vector3<f64>,
+) -> Result<Vec<f64>, ExamineError> {
+    let branch = if q.norm() > 0.0 { 0 } else { 3 };
+    let lowest = |dynamics: &Dynamics| -> Result<f64, ExamineError> {
+        let values = dynamics.eigenvalues(q).map_err(eigen_error("truncation"))?;
+        Ok(wavenumber_per_cm(
+            values.get(branch).copied().unwrap_or_default(),
+        ))
+    };
+    let full = lowest(&workup.dynamics)?;
+    truncated
+        .iter()
+        .map(|(_, dynamics)| Ok((lowest(dynamics)? - full).abs()))
+        .collect()
 }

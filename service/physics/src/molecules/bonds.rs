@@ -3,12 +3,8 @@
 use nalgebra::{Matrix3, Vector3};
 
 use crate::crystal::Crystal;
+use crate::reduction::short_basis;
 use crate::supercell::Translation;
-
-/// Rounds of pairwise reduction; each shortens a vector, and sensible cells need a few.
-const REDUCTION_ROUNDS_MAX: usize = 1000;
-/// A reduction step must shorten by more than rounding.
-const REDUCTION_GAIN: f64 = 1.0 - 1e-12;
 
 /// A bond from one atom of the home cell to the image of another at a lattice translation of the
 /// written positions.
@@ -35,16 +31,11 @@ pub(super) struct ReducedLattice {
 }
 
 impl ReducedLattice {
-    /// Reduces the cell (rows, Å) pair by pair.
+    /// Reduces the cell (rows, Å).
     pub(super) fn new(cell: &Matrix3<f64>) -> Self {
-        let mut rows: [Vector3<f64>; 3] = std::array::from_fn(|r| cell.row(r).transpose());
-        let mut transform: [Translation; 3] = [[1, 0, 0], [0, 1, 0], [0, 0, 1]];
-        for _ in 0..REDUCTION_ROUNDS_MAX {
-            if !reduce_once(&mut rows, &mut transform) {
-                break;
-            }
-        }
-        let vectors = Matrix3::from_rows(&rows.map(|row| row.transpose()));
+        let short = short_basis(cell);
+        let transform = std::array::from_fn(|r| std::array::from_fn(|c| i64::from(short[(r, c)])));
+        let vectors = short.map(f64::from) * cell;
         let inverse = vectors.try_inverse().unwrap_or_else(Matrix3::zeros);
         Self {
             vectors,
@@ -100,26 +91,6 @@ impl ReducedLattice {
     fn in_cell_basis(&self, shift: &Translation) -> Translation {
         std::array::from_fn(|c| (0..3).map(|k| shift[k] * self.transform[k][c]).sum())
     }
-}
-
-/// Shortens one vector by the nearest multiple of another; false if none can be shortened.
-fn reduce_once(rows: &mut [Vector3<f64>; 3], transform: &mut [Translation; 3]) -> bool {
-    for target in 0..3 {
-        for other in (0..3).filter(|&other| other != target) {
-            let step = (rows[target].dot(&rows[other]) / rows[other].norm_squared()).round();
-            let shorter = rows[target] - rows[other] * step;
-            if shorter.norm_squared() < rows[target].norm_squared() * REDUCTION_GAIN {
-                rows[target] = shorter;
-                let multiple = integer(step);
-                let taken = transform[other];
-                for (kept, element) in transform[target].iter_mut().zip(taken) {
-                    *kept -= multiple * element;
-                }
-                return true;
-            }
-        }
-    }
-    false
 }
 
 #[allow(
